@@ -1,0 +1,1 @@
+"""Defects of a sensor: pixels, lines, clusters, traps; the mask."""

@@ -1,0 +1,1 @@
+"""Raw frames: readers, geometry, inventory and stacks."""

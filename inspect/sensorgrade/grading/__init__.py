@@ -1,0 +1,1 @@
+"""Limits, decision rules and what follows from them."""

@@ -1,0 +1,1 @@
+"""Compiled loops over every sample: arrays and numbers only."""

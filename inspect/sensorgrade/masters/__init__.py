@@ -1,0 +1,1 @@
+"""From stacks of raw frames, read once, to master frames."""

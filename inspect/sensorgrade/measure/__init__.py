@@ -1,0 +1,1 @@
+"""Measurements of a sensor, each with its standard uncertainty."""

@@ -1,0 +1,18 @@
+"""What a recipe may name: the stages there are, and what limits can be set on."""
+
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True, slots=True)
+class Vocabulary:
+    """Assembled from the stage table, so that the recipe reader need not know the stages.
+
+    ``stages`` maps a stage's name to its options class. ``quantities`` maps a measurement's
+    name to its unit ("electron", "%", ...) and ``meanings`` to a sentence. ``counts`` are the
+    names of countable defects (hot_pixels, ...), without unit.
+    """
+
+    stages: dict[str, type]
+    quantities: dict[str, str]
+    meanings: dict[str, str]
+    counts: tuple[str, ...]

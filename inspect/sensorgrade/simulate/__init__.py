@@ -1,0 +1,1 @@
+"""Sensors with known truth, for the demo, for planning and for tests."""
