@@ -59,12 +59,14 @@ class PairTiles:
     over ``count`` pixels kept (differences past 5 sigma of their tile are left out of all sums).
 
     mean_a, mean_b      mean of raw DN less the row's overscan (else raw DN)
-    var_a, var_b, cov_ab    sample (co)variances (ddof = 1) of A and of B over the tile [DN²]
+    var_a, var_b, cov_ab    sample (co)variances (ddof = 1) of A and of B over the tile [DN²], of
+                            the raw samples: subtracting overscan row by row would add its noise
     cov_right, cov_down     covariance of the difference A - B with its right and lower
                             neighbour of the same region [DN²]
     saturated           samples of A or B at or above the converter's last code
-    ``row_variance`` (P,), ``column_variance`` (P,): variance of the region's row means and column
-    means of A - B, each less its tile-independent mean [DN²]; with pixel noise still in it.
+    ``row_variance`` (P,), ``column_variance`` (P,): variance [DN²] of the region's row means and
+    column means of A - B after each tile's mean is taken out (the degrees of freedom so lost are
+    counted); pixel noise, 2 sigma²/columns and 2 sigma²/rows, is still in it.
     """
 
     stack: Stack
