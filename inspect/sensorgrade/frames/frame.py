@@ -2,6 +2,7 @@
 
 from dataclasses import dataclass, field
 from pathlib import Path
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,6 +13,24 @@ KINDS = ("bias", "dark", "flat", "x-ray", "pump")
 
 
 @dataclass(frozen=True, slots=True)
+class Coding:
+    """How samples lie that cannot be read in place, and must be decoded first.
+
+    ``packing`` is ``"plain"`` or ``"gzip"`` for numbers of numpy type ``stored``, row after row
+    from the plane's ``offset``; else the form of a whole image that a library unpacks, and
+    ``index`` which image of the file. The value is zero + scale * stored; ``blank`` is the stored
+    number that stands for no value.
+    """
+
+    packing: Literal["plain", "gzip", "fits tiles", "tiff", "columns first"]
+    stored: str
+    scale: float = 1.0
+    zero: float = 0.0
+    blank: int | None = None
+    index: int = 0
+
+
+@dataclass(frozen=True, slots=True)
 class Plane:
     """One two-dimensional image whose samples can be read in row bands, any band first.
 
@@ -19,7 +38,8 @@ class Plane:
     say where they lie, row after row without gaps. ``dtype`` is ``"uint16"`` or ``"float32"``.
     ``swap`` says that the bytes stand in the other order than the machine's; ``flip`` that the
     top bit is inverted (FITS BZERO 32768). Anything else (compressed, scaled, 32-bit integer)
-    is first decoded into a scratch file by its reader, so that ``path`` can be that file.
+    carries a ``coding``; `decoded` replaces such planes by ones in a scratch folder, and must be
+    called before the samples are read in bands.
     """
 
     shape: tuple[int, int]
@@ -28,6 +48,7 @@ class Plane:
     offset: int = 0
     swap: bool = False
     flip: bool = False
+    coding: Coding | None = None
     data: NDArray[np.uint16] | NDArray[np.float32] | None = field(default=None, compare=False)
 
 
