@@ -6,6 +6,9 @@ from typing import Literal
 from sensorgrade.recipe.model import Limit
 
 Outcome = Literal["accept", "reject", "undecided"]
+# "ungraded": the recipe asks for no grade, so there was nothing to decide. It is neither a pass
+# nor an open question, and it does not count as "rejected or undecided" in the exit status.
+Decision = Literal["accept", "reject", "undecided", "ungraded"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -14,7 +17,8 @@ class LimitResult:
 
     ``margin`` is positive inside the limit, in the limit's unit; ``margin_in_uncertainties`` the
     same over the standard uncertainty. ``probability`` is that of conformity. ``value`` is None
-    when nothing was measured (then undecided). ``reason`` is one sentence with number, limit,
+    when nothing was measured (then undecided). ``margin_in_uncertainties`` is None also when the
+    uncertainty is 0. ``reason`` is one sentence with number, limit,
     margin and place.
     """
 
@@ -32,9 +36,13 @@ class LimitResult:
 
 @dataclass(frozen=True, slots=True)
 class Graded:
-    """``grade`` is the best that was met, None if none. ``reasons`` by weight, weightiest first."""
+    """``grade`` is the best that was met, None if none. ``reasons`` by weight, weightiest first.
+
+    ``decision`` is accept when a grade was met; undecided when none was met but one still may
+    be; reject when every grade was missed; ungraded when the recipe has no grades.
+    """
 
     grade: str | None
-    decision: Outcome
+    decision: Decision
     reasons: tuple[str, ...]
     limits: tuple[LimitResult, ...]
