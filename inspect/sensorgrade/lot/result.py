@@ -31,7 +31,8 @@ class DeviceResult:
     """Identity, findings, measurements, counts, grade and provenance of one device.
 
     ``folder`` is the safe folder name made from ``serial``. ``not_measured`` maps a stage to
-    the sentence saying what it lacked.
+    the sentence saying what it lacked. ``taken`` is when the earliest frame was started [s since
+    1970, UTC], None when no frame says; it puts a lot in the order of time.
     """
 
     serial: str
@@ -46,3 +47,4 @@ class DeviceResult:
     not_measured: dict[str, str]
     graded: Graded
     provenance: Provenance
+    taken: float | None = None
