@@ -9,10 +9,13 @@ class Vocabulary:
 
     ``stages`` maps a stage's name to its options class. ``quantities`` maps a measurement's
     name to its unit ("electron", "%", ...) and ``meanings`` to a sentence. ``counts`` are the
-    names of countable defects (hot_pixels, ...), without unit.
+    names of countable defects (hot_pixels, ...), without unit. ``sources`` maps each name that
+    limits can be set on to the stages that yield it: at least one of them must be in a recipe
+    that sets such a limit.
     """
 
     stages: dict[str, type]
     quantities: dict[str, str]
     meanings: dict[str, str]
     counts: tuple[str, ...]
+    sources: dict[str, tuple[str, ...]]
