@@ -1,0 +1,226 @@
+"""The grade of one device: its readings held against the recipe's limits."""
+
+from collections.abc import Sequence
+
+from sensorgrade.defects.defect import DefectCount
+from sensorgrade.grading import sentence
+from sensorgrade.grading.conformity import guard_factor, probability_of_conformity
+from sensorgrade.grading.decision import Decision, Graded, LimitResult
+from sensorgrade.grading.rule import conformity_of_count, count_outcome, outcome
+from sensorgrade.grading.selection import (
+    Reading,
+    absent,
+    by_name,
+    combined,
+    reading_value,
+    readings,
+)
+from sensorgrade.grading.temperature import at_temperature
+from sensorgrade.measurement import Finding, Measurement
+from sensorgrade.recipe.model import Grade, Limit, Recipe
+
+NO_GRADES = "The recipe asks for no grades, so nothing was decided."
+
+
+def grade(
+    measurements: Sequence[Measurement],
+    counts: Sequence[DefectCount],
+    findings: Sequence[Finding],
+    *,
+    recipe: Recipe,
+) -> Graded:
+    """The best grade all of whose limits are met, every limit's outcome, and the reasons.
+
+    A limit holds for each reading of its name (see `selection.readings`). One that has no
+    reading, or that a finding says can no longer be decided, is undecided and never passed.
+    Every limit is decided on its own at the rule's confidence: a device just past any one of
+    them is accepted no more often than that limit's rule allows.
+
+    Parameters
+    ----------
+    measurements, counts, findings : sequences
+        All that the stages and the audit said of the device.
+    recipe : Recipe
+        Its grades, best first, its decision rule, outputs and temperature tolerance.
+
+    Returns
+    -------
+    Graded
+        ``decision`` is ungraded when the recipe has no grades. A grade without limits is met by
+        every device. ``reasons`` say why the device is not at the top grade and are empty when
+        it is: limits missed come before those undecided; among the missed, those also missed in
+        more of the lower grades first, then the farthest past the limit in proportion to it.
+    """
+    if not recipe.grades:
+        return Graded(None, "ungraded", (NO_GRADES,), ())
+    named = by_name(measurements, counts)
+    barred = {name: finding for finding in findings for name in finding.undecides}
+    results: list[LimitResult] = []
+    met: str | None = None
+    open_question = False
+    for level in recipe.grades:
+        of_grade = [
+            result
+            for limit in level.limits
+            for result in _results(level, limit, named, barred, recipe)
+        ]
+        results += of_grade
+        outcomes = {result.outcome for result in of_grade}
+        if met is None and outcomes <= {"accept"}:
+            met = level.name
+        open_question = open_question or "reject" not in outcomes
+    decision: Decision = "accept" if met else "undecided" if open_question else "reject"
+    return Graded(met, decision, _reasons(results, met, recipe.grades), tuple(results))
+
+
+def _results(
+    level: Grade,
+    limit: Limit,
+    named: dict[str, list[Reading]],
+    barred: dict[str, Finding],
+    recipe: Recipe,
+) -> list[LimitResult]:
+    """The outcome of one limit, for every place it holds for."""
+    found = readings(limit, named)
+    if not found:
+        place = limit.scope or (f"zone {limit.zone}" if limit.zone else "device")
+        return [_undecided(level, limit, place, "not measured")]
+    lacking = absent(limit, found, recipe.sensor)
+    results = [_undecided(level, limit, place, "not measured") for place in lacking]
+    held: list[Reading] = []
+    for reading in found:
+        if limit.temperature is None:
+            held.append(reading)
+            continue
+        there = at_temperature(
+            reading,
+            named,
+            celsius=limit.temperature,
+            tolerance=recipe.frames.temperature_tolerance,
+        )
+        if isinstance(there, str):
+            results.append(_undecided(level, limit, reading.scope, there, reading))
+        else:
+            held.append(there)
+    for reading in combined(limit, held):
+        if limit.name in barred:
+            finding = barred[limit.name]
+            why = f"cannot be decided, {finding.seen.rstrip('.')} ({finding.where})"
+            results.append(_undecided(level, limit, reading.scope, why, reading))
+        else:
+            results.append(_decided(level, limit, reading, recipe))
+    return results
+
+
+def _decided(level: Grade, limit: Limit, reading: Reading, recipe: Recipe) -> LimitResult:
+    """The outcome of one limit for one reading."""
+    rule = limit.rule or recipe.decision.kind
+    confidence = recipe.decision.confidence
+    value, doubt = reading_value(reading), reading.standard_uncertainty
+    margin = limit.bound - value if limit.relation == "<=" else value - limit.bound
+    if isinstance(reading, DefectCount):
+        probability = conformity_of_count(reading, relation=limit.relation, bound=limit.bound)
+        ruled = count_outcome(
+            reading,
+            relation=limit.relation,
+            bound=limit.bound,
+            confidence=confidence,
+            rule=rule,
+        )
+    else:
+        upper, lower = (limit.bound, None) if limit.relation == "<=" else (None, limit.bound)
+        probability = probability_of_conformity(value, doubt, lower=lower, upper=upper)
+        ruled = outcome(
+            value,
+            relation=limit.relation,
+            bound=limit.bound,
+            guard=guard_factor(confidence) * doubt,
+            rule=rule,
+        )
+    return LimitResult(
+        grade=level.name,
+        limit=limit,
+        scope=reading.scope,
+        value=value,
+        standard_uncertainty=doubt,
+        margin=margin,
+        margin_in_uncertainties=margin / doubt if doubt > 0.0 else None,
+        probability=probability,
+        outcome=ruled,
+        reason=sentence.standing(
+            reading,
+            limit,
+            grade=level.name,
+            outcome=ruled,
+            margin=margin,
+            probability=probability,
+            rule=rule,
+            confidence=confidence,
+        ),
+    )
+
+
+def _undecided(
+    level: Grade, limit: Limit, scope: str, why: str, reading: Reading | None = None
+) -> LimitResult:
+    """A limit without a usable reading."""
+    return LimitResult(
+        grade=level.name,
+        limit=limit,
+        scope=scope,
+        value=None if reading is None else reading_value(reading),
+        standard_uncertainty=None if reading is None else reading.standard_uncertainty,
+        margin=None,
+        margin_in_uncertainties=None,
+        probability=None,
+        outcome="undecided",
+        reason=sentence.missing(limit, grade=level.name, scope=scope, why=why),
+    )
+
+
+def _reasons(
+    results: list[LimitResult], met: str | None, grades: tuple[Grade, ...]
+) -> tuple[str, ...]:
+    """One sentence for each place that keeps the device from a better grade."""
+    missed = [level.name for level in grades]
+    if met is not None:
+        missed = missed[: missed.index(met)]
+    places: dict[tuple[object, ...], list[LimitResult]] = {}
+    for result in results:
+        if result.grade in missed and result.outcome != "accept":
+            limit = result.limit
+            key = (limit.name, limit.relation, limit.of, limit.zone, limit.temperature)
+            places.setdefault((*key, result.scope), []).append(result)
+    weighed = sorted(places.values(), key=_weight, reverse=True)
+    return tuple(_sentence(of_place) for of_place in weighed)
+
+
+def _weight(of_place: list[LimitResult]) -> tuple[int, int, float]:
+    """Rejections first, then how many grades they cost, then how far past the limit."""
+    first = of_place[0]
+    rejections = [result for result in of_place if result.outcome == "reject"]
+    if rejections:
+        return 2, len(rejections), max(_excess(result) for result in rejections)
+    if first.margin is None or first.probability is None:
+        return 1, len(of_place), 0.0
+    return 0, len(of_place), 1.0 - first.probability
+
+
+def _excess(result: LimitResult) -> float:
+    """How far past the limit, in proportion to it; to one unit where the limit is 0."""
+    margin = result.margin or 0.0
+    return -margin / (abs(result.limit.bound) or 1.0)
+
+
+def _sentence(of_place: list[LimitResult]) -> str:
+    """The best grade's sentence, and which lower grades it costs as well."""
+    first, *others = of_place
+    costs = [
+        f"{other.grade} ({sentence.allowed(other.limit)})"
+        for other in others
+        if other.outcome == first.outcome
+    ]
+    if not costs:
+        return first.reason
+    verb = "misses" if first.outcome == "reject" else "leaves open"
+    return f"{first.reason.rstrip('.')}; also {verb} {', '.join(costs)}."
