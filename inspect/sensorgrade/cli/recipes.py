@@ -52,8 +52,8 @@ def show(name: str) -> None:
 def validate(files: tuple[str, ...], as_json: bool, quiet: bool) -> None:
     """Check recipes: every mistake at once.
 
-    No frames are needed. RECIPE is a file or the name of a ready recipe. Exit status 0 when all are right, 2 when one
-    is not.
+    No frames are needed. RECIPE is a file or the name of a ready recipe. Exit status 0 when all
+    are right, 2 when one is not.
     """
     from sensorgrade.errors import RecipeError, RequestError
     from sensorgrade.recipe.library import find_recipe

@@ -96,6 +96,9 @@ def grades(node: Node, context: Context, line: int, problems: Problems) -> tuple
     names = list(node.entries)
     for name, item in node.entries.items():
         below = joined(where, name)
+        if not name.strip() or not name.isprintable() or len(name) > 60:
+            sentence = "expected a name of printable characters, 60 at most"
+            problems.add(item.line, below, sentence)
         limits = _grade_limits(item, context, below, problems)
         if isinstance(item.value, Mapping) and not item.value.entries and name != names[-1]:
             problems.add(
