@@ -8,7 +8,7 @@ import pytest
 from recipe.vocabulary_for_tests import VOCABULARY, HotPixels, Inner, ReadNoise
 from sensorgrade.errors import RecipeError
 from sensorgrade.recipe.document import LONGEST
-from sensorgrade.recipe.load import load_recipe, parse_recipe, recipe_title
+from sensorgrade.recipe.load import load_options, load_recipe, parse_recipe, recipe_title
 from sensorgrade.recipe.model import DecisionRule, FrameRules, Limit, Section
 
 RECIPE = """\
@@ -180,7 +180,7 @@ def test_the_title_is_found_without_judging_the_rest(tmp_path):
     [
         (b"name: \xff", "{path}:1  not UTF-8 text; save the file as UTF-8"),
         (b"#" * (LONGEST + 1), "{path}: larger than 1 MiB; a recipe is a few pages at most"),
-        (None, "{path}: no such file; expected a recipe, a YAML file"),
+        (None, "{path}: no such file; expected a YAML file"),
     ],
 )
 def test_a_file_that_is_no_text_is_refused(tmp_path, content, sentence):
@@ -212,3 +212,16 @@ def test_all_ready_recipes_are_found_by_name():
         find_recipe("no-such-thing")
     with pytest.raises(RequestError, match=r"a/b\.yaml: no such recipe file"):
         find_recipe(str(Path("a") / "b.yaml"))
+
+
+def test_any_options_class_can_be_read_from_a_file_of_its_own(tmp_path):
+    path = tmp_path / "pairs.yaml"
+    path.write_text("pairs: 3\n")
+    assert load_options(path, ReadNoise) == ReadNoise(pairs=3)
+    path.write_text("pairs: 0\npears: 3\n")
+    with pytest.raises(RecipeError) as caught:
+        load_options(path, ReadNoise)
+    assert caught.value.problems == (
+        f"{path}:1  pairs: expected a whole number, 1 or more, found 0",
+        f"{path}:2  pears: no such key; nearest is pairs",
+    )

@@ -25,7 +25,7 @@ RANGE = re.compile(
     rf"\s*({NUMBER})(?<!\.)\s*([^\s.][^.]*?)?\s*\.\.\s*({NUMBER})\s*(.*?)\s*", re.DOTALL
 )
 RELATIONS = {"<=": "<=", "≤": "<=", ">=": ">=", "≥": ">="}
-CELL_COLOURS = ("red", "green-red", "green-blue", "blue")
+CELL_COLOURS = ("red", "green", "green-red", "green-blue", "blue")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -41,7 +41,9 @@ class LimitOptions:
         default="every",
     )
     output: str | None = entry("Only this output", default=None)
-    colour: str | None = choice("Only this colour plane", *CELL_COLOURS, default=None)
+    colour: str | None = choice(
+        "Only this colour plane; green is both of them", *CELL_COLOURS, default=None
+    )
     wavelength: str | None = entry(
         "Only this wavelength or filter, as the frames name it", default=None
     )

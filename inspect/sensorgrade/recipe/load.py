@@ -3,7 +3,7 @@
 import hashlib
 import re
 from pathlib import Path
-from typing import Any
+from typing import Any, TypeVar
 
 from sensorgrade.errors import RecipeError
 from sensorgrade.options import Declared
@@ -12,6 +12,8 @@ from sensorgrade.recipe.document import LONGEST, Mapping, Problems, Scalar, docu
 from sensorgrade.recipe.limits import context, grades
 from sensorgrade.recipe.model import DecisionRule, FrameRules, Grade, Recipe, Sensor, Zone
 from sensorgrade.recipe.vocabulary import Vocabulary
+
+Options = TypeVar("Options")
 
 # Top-level keys with what they hold, in the order of a recipe.
 TOP = {
@@ -36,9 +38,30 @@ def load_recipe(path: Path, vocabulary: Vocabulary) -> Recipe:
     RecipeError
         The file cannot be read as text, or the recipe has mistakes: all of them, a line each.
     """
+    return parse_recipe(_text(path), vocabulary, path=str(path))
+
+
+def load_options(path: Path, cls: type[Options]) -> Options:
+    """Any other YAML file whose keys are the fields of one options class, such as a sensor model.
+
+    Raises
+    ------
+    RecipeError
+        As `load_recipe`.
+    """
+    problems = Problems(str(path))
+    root = document(_text(path), problems)
+    read: Options = options(cls, root, root.line, "", problems)
+    if len(problems):
+        raise problems.error()
+    return read
+
+
+def _text(path: Path) -> str:
+    """The file's text, if it is one of a size that a person writes."""
     if not path.is_file():
         what = "this is a folder" if path.is_dir() else "no such file"
-        raise RecipeError((f"{path}: {what}; expected a recipe, a YAML file",))
+        raise RecipeError((f"{path}: {what}; expected a YAML file",))
     try:
         with path.open("rb") as stream:
             content = stream.read(LONGEST + 1)
@@ -47,11 +70,10 @@ def load_recipe(path: Path, vocabulary: Vocabulary) -> Recipe:
     if len(content) > LONGEST:
         raise RecipeError((f"{path}: larger than 1 MiB; a recipe is a few pages at most",))
     try:
-        text = content.decode("utf-8")
+        return content.decode("utf-8")
     except UnicodeDecodeError as error:
         line = content.count(b"\n", 0, error.start) + 1
         raise RecipeError((f"{path}:{line}  not UTF-8 text; save the file as UTF-8",)) from error
-    return parse_recipe(text, vocabulary, path=str(path))
 
 
 def parse_recipe(text: str, vocabulary: Vocabulary, *, path: str) -> Recipe:

@@ -69,6 +69,8 @@ def quantity(text: str, unit: str) -> float:
     100.0
     >>> quantity("263.15 K", "degC")
     -10.0
+    >>> quantity("3 /cm2", "1 / mm2")
+    0.03
     """
     match = QUANTITY.fullmatch(text)
     if match is None:
@@ -135,6 +137,8 @@ def parsed(text: str) -> units.UnitBase:
     WrongQuantity
         It names none; the message says the nearest that is usual.
     """
+    if text.startswith("/"):  # as in "5 /cm2"
+        text = f"1 {text}"
     if UNIT_TEXT.fullmatch(text) is None:
         raise WrongQuantity("what follows the number is no unit")
     try:

@@ -126,7 +126,7 @@ def _quantity(declared: Declared) -> dict[str, Any]:
         return {"type": ["string", "number"], "pattern": f"^{NUMBER}$"}
     return {
         "type": "string",
-        "pattern": rf"^\s*{NUMBER}\s*[A-Za-z%°µμ].*$",
+        "pattern": rf"^\s*{NUMBER}\s*[A-Za-z%°µμ/].*$",
         "examples": [example(declared.unit)],
     }
 
