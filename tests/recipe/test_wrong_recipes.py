@@ -139,7 +139,7 @@ PARTS = [  # (what follows the head in line 3, the sentence)
     ("frames: {kind: [a]}", "frames.kind: expected text, found a list"),
     ('frames: {kind: ""}', 'frames.kind: expected text, found ""'),
     ('frames: {kind: "a\\nb"}',
-     r'frames.kind: expected text, found "a\x0ab"; keep to one line of printable characters'),
+     r'frames.kind: expected text, found "a\u000ab"; keep to one line of printable characters'),
     ("frames: {sorted_by: manifest}",
      "frames: sorted_by: manifest needs 'manifest', the name of the CSV file"),
     ("frames: {sorted_by: name}",
@@ -293,7 +293,7 @@ GRADES = [  # (what follows "grades:" in line 4, the sentence)
     ("{a: {read_noise: [[<= 5 electron]]}}",
      "grades.a.read_noise: expected a limit or a mapping, found a list"),
     ('{"a\\u0007": {read_noise: <= 5 electron}}',
-     r"grades.a\x07: expected a name of printable characters, 60 at most"),
+     r"grades.a\u0007: expected a name of printable characters, 60 at most"),
 ]  # fmt: skip
 
 

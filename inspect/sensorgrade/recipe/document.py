@@ -16,6 +16,7 @@ from sensorgrade.errors import RecipeError
 
 LONGEST = 1 << 20  # characters of one recipe
 DEEPEST = 12  # levels of nesting; a recipe with everything in it has 6
+LONGEST_SENTENCE = 1000  # characters of one message
 MOST_NODES = 50_000  # keys and values of one document
 
 TABBED = re.compile(r"^[ ]*\t", re.MULTILINE)
@@ -76,7 +77,8 @@ class Problems:
 
     def add(self, line: int, where: str, sentence: str) -> None:
         """Note a mistake at ``line`` in the key ``where`` (dotted, empty for the document)."""
-        self._found.append((line, f"{where}: {sentence}" if where else sentence))
+        whole = f"{where}: {sentence}" if where else sentence
+        self._found.append((line, printable(whole, LONGEST_SENTENCE)))
 
     def error(self) -> RecipeError:
         """All mistakes, in the order of lines."""
@@ -96,7 +98,7 @@ def joined(where: str, key: str) -> str:
 
 def printable(text: str, longest: int = 60) -> str:
     """Text fit for one line of a terminal: control characters escaped, the middle cut."""
-    clean = "".join(c if c.isprintable() else f"\\x{ord(c):02x}" for c in text)
+    clean = "".join(c if c.isprintable() else f"\\u{ord(c):04x}" for c in text)
     return clean if len(clean) <= longest else f"{clean[: longest - 10]}…{clean[-9:]}"
 
 
