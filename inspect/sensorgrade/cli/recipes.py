@@ -10,10 +10,11 @@ import click
     epilog="\b\nExamples:\n"
     "  sensorgrade recipes list\n"
     "  sensorgrade recipes show two-output-ccd > mine.yaml\n"
-    "  sensorgrade recipes validate mine.yaml"
+    "  sensorgrade recipes validate mine.yaml\n"
+    "  sensorgrade recipes draft frames/ --out mine.yaml"
 )
 def command() -> None:
-    """List, show and validate recipes; write their JSON Schema.
+    """List, show, draft and validate recipes; write their JSON Schema.
 
     A recipe is a YAML file that states the device, its frames, what is measured and the limits of
     each grade. Ready ones come with the program: copy the nearest and change it.
@@ -103,3 +104,30 @@ def schema(out: Path | None) -> None:
     else:
         out.write_text(text, encoding="utf-8")
         click.echo(f"wrote {out}", err=True)
+
+
+@command.command(epilog="\b\nExample:\n  sensorgrade recipes draft frames/ --out mine.yaml")
+@click.argument("folder", type=click.Path(path_type=Path))
+@click.option(
+    "--out",
+    type=click.Path(dir_okay=False, path_type=Path),
+    help="Write to this new file instead of printing.",
+)
+def draft(folder: Path, out: Path | None) -> None:
+    """Write a first recipe for a FOLDER of frames.
+
+    Header keywords, kinds, shapes, outputs and overscan are guessed from the frames; a comment on
+    each guess says where it comes from and what to check. The draft sets no limits.
+    """
+    from sensorgrade.errors import RequestError
+    from sensorgrade.frames.draft import drafted_recipe
+    from sensorgrade.stages import vocabulary
+
+    if out is not None and out.exists():
+        raise RequestError(f"{out}: exists already; name a new file or remove it")
+    text = drafted_recipe(folder, stages=tuple(vocabulary().stages))
+    if out is None:
+        click.echo(text, nl=False)
+    else:
+        out.write_text(text, encoding="utf-8")
+        click.echo(f"wrote {out}; now check each guess in it", err=True)

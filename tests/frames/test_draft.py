@@ -1,0 +1,201 @@
+"""A drafted recipe is right where the frames tell, and says so where they do not."""
+
+import os
+from pathlib import Path
+
+import numpy as np
+import pytest
+from astropy.io import fits
+
+from recipe.vocabulary_for_tests import VOCABULARY
+from sensorgrade.errors import RequestError
+from sensorgrade.frames.draft import drafted_recipe
+from sensorgrade.frames.keyword_guess import guessed_keywords
+from sensorgrade.frames.layout_guess import guessed_layout
+from sensorgrade.recipe.load import parse_recipe
+from sensorgrade.recipe.model import Section
+
+ROWS, COLUMNS, OVERSCAN = 128, 256, 20
+
+
+def two_outputs(rng, light):
+    """A raw frame of two outputs whose overscans follow the image, left's first."""
+    frame = rng.normal(1000.0, 3.0, (ROWS, COLUMNS + 2 * OVERSCAN))
+    frame[:, COLUMNS // 2 : COLUMNS] += 12.0
+    frame[:, COLUMNS + OVERSCAN :] += 12.0
+    x = np.linspace(-1, 1, COLUMNS)
+    frame[:, :COLUMNS] += light * (1 - 0.3 * x**2)  # a vignetted lamp
+    return frame
+
+
+def write(path, image, **header):
+    path.parent.mkdir(parents=True, exist_ok=True)
+    unit = fits.PrimaryHDU(np.clip(image, 0, 65535).astype(np.uint16))
+    for name, value in header.items():
+        unit.header[name.replace("_", "-")] = value
+    unit.writeto(path)
+
+
+@pytest.fixture
+def folder(tmp_path):
+    rng = np.random.default_rng(3)
+    source = tmp_path / "dev 1"
+    for n in range(3):
+        write(source / f"a{n}.fits", two_outputs(rng, 0), OBSTYPE="Zero", EXPOSURE=0.0, SERNO="K7")
+        write(source / f"b{n}.fits", two_outputs(rng, 0), OBSTYPE="Dark", EXPOSURE=60.0, SERNO="K7")
+        write(
+            source / f"c{n}.fits", two_outputs(rng, 2e4), OBSTYPE="FLAT", EXPOSURE=5.0, SERNO="K7"
+        )
+    write(source / "d.fits", two_outputs(rng, 2e4), OBSTYPE="arc", EXPOSURE=5.0, SERNO="K7")
+    return source
+
+
+def drafted(folder):
+    text = drafted_recipe(folder, stages=tuple(VOCABULARY.stages))
+    return text, parse_recipe(text, VOCABULARY, path="draft.yaml")
+
+
+def test_a_draft_is_a_recipe_that_validates_and_names_what_it_found(folder):
+    text, recipe = drafted(folder)
+    assert recipe.name == "dev 1"
+    assert (recipe.frames.kind, recipe.frames.exposure) == ("OBSTYPE", "EXPOSURE")
+    assert recipe.frames.serial == "SERNO"
+    assert recipe.frames.kinds == {"arc": "ignore"}
+    assert list(recipe.stages) == list(VOCABULARY.stages)
+    for line in ("#      3 bias", "#      3 dark, 60 s", "#      3 flat, 5 s"):
+        assert line in text
+
+
+def test_outputs_and_their_overscans_are_told_from_the_data(folder):
+    outputs = drafted(folder)[1].sensor.outputs
+    half = COLUMNS // 2
+    assert list(outputs) == ["left", "right"]
+    assert outputs["left"].image == Section(0, ROWS, 0, half)
+    assert outputs["right"].image == Section(0, ROWS, half, COLUMNS)
+    assert outputs["left"].overscan == Section(0, ROWS, COLUMNS, COLUMNS + OVERSCAN)
+    assert outputs["right"].overscan == Section(0, ROWS, COLUMNS + OVERSCAN, COLUMNS + 2 * OVERSCAN)
+    assert (outputs["left"].corner, outputs["right"].corner) == ("bottom left", "bottom right")
+
+
+def test_overscans_that_cross_over_go_to_the_output_of_their_level():
+    rng = np.random.default_rng(4)
+    dark = two_outputs(rng, 0)
+    dark[:, COLUMNS:] = np.roll(dark[:, COLUMNS:], OVERSCAN, axis=1)
+    lit = dark.copy()
+    lit[:, :COLUMNS] += 9000
+    outputs = guessed_layout(dark, lit).outputs
+    assert outputs["right"].overscan == Section(0, ROWS, COLUMNS, COLUMNS + OVERSCAN)
+
+
+def test_one_output_without_overscan_needs_no_sections():
+    dark = np.random.default_rng(5).normal(500, 3, (ROWS, COLUMNS))
+    assert guessed_layout(dark, dark + 8000).outputs == {}
+
+
+def test_a_gradient_or_a_bad_column_is_not_an_output():
+    dark = np.random.default_rng(6).normal(500, 3, (ROWS, COLUMNS)) + np.arange(COLUMNS) * 0.2
+    dark[:, COLUMNS // 2] += 500
+    lit = dark + 8000
+    lit[:, 40] = dark[:, 40]  # a dead column is no overscan
+    assert guessed_layout(dark, lit).outputs == {}
+
+
+def test_prescan_and_parallel_overscan_of_one_output():
+    dark = np.random.default_rng(7).normal(500, 3, (ROWS + 10, COLUMNS + 30))
+    lit = dark.copy()
+    lit[:ROWS, 6 : COLUMNS + 6] += 5000
+    (output,) = guessed_layout(dark, lit).outputs.values()
+    assert output.image == Section(0, ROWS, 6, COLUMNS + 6)
+    assert output.prescan == Section(0, ROWS, 0, 6)
+    assert output.overscan == Section(0, ROWS, COLUMNS + 6, COLUMNS + 30)
+    assert output.parallel_overscan == Section(ROWS, ROWS + 10, 6, COLUMNS + 6)
+
+
+def test_four_outputs_with_overscan_in_the_middle():
+    rng = np.random.default_rng(8)
+    dark = rng.normal(500, 3, (ROWS, COLUMNS))
+    dark[: ROWS // 2] += 9
+    dark[:, COLUMNS // 2 :] += 20
+    lit = dark.copy()
+    lit[:, : COLUMNS // 2 - 10] += 5000
+    lit[:, COLUMNS // 2 + 10 :] += 5000
+    outputs = guessed_layout(dark, lit).outputs
+    assert set(outputs) == {"bottom left", "bottom right", "top left", "top right"}
+    middle = Section(ROWS // 2, ROWS, COLUMNS // 2, COLUMNS // 2 + 10)
+    assert outputs["top right"].overscan == middle
+    assert outputs["top right"].corner == "top right"
+
+
+@pytest.mark.parametrize("cell", ["RGGB", "BGGR", "GRBG", "GBRG"])
+@pytest.mark.parametrize("shape", [(64, 64), (66, 90)])
+def test_a_mosaic_under_a_warm_lamp_is_named(cell, shape):
+    dark = np.random.default_rng(9).normal(500, 3, shape)
+    lit = dark.copy()
+    for index, letter in enumerate(cell):
+        lit[index // 2 :: 2, index % 2 :: 2] += {"R": 7000, "G": 9000, "B": 4000}[letter]
+    assert guessed_layout(dark, lit).colour == cell
+    assert guessed_layout(dark, dark + 8000).colour == "none"
+
+
+def test_names_tell_the_kind_where_headers_do_not(tmp_path):
+    rng = np.random.default_rng(10)
+    for n in range(2):
+        write(tmp_path / f"s_bias_{n}.fits", rng.normal(500, 3, (64, 64)))
+        write(tmp_path / f"s_dark_{n}_60s.fits", rng.normal(500, 3, (64, 64)))
+        write(tmp_path / f"s_flat_{n}_2.5s.fits", rng.normal(8000, 9, (64, 64)))
+    recipe = drafted(tmp_path)[1]
+    assert recipe.frames.sorted_by == "name"
+    import re
+
+    pattern = re.compile(recipe.frames.pattern)
+    assert pattern.fullmatch("s_dark_1_60s.fits").groupdict() == {"kind": "dark", "exposure": "60"}
+    assert pattern.fullmatch("x/s_flat_0_2.5s.fits")["exposure"] == "2.5"
+    assert pattern.fullmatch("s_bias_0.fits").groupdict() == {"kind": "bias", "exposure": None}
+
+
+def test_the_converter_s_bits_are_stated_only_where_its_last_code_is_reached(tmp_path):
+    image = np.random.default_rng(11).normal(3000, 900, (64, 64))
+    write(tmp_path / "flat.fits", np.clip(image, 0, 4095), IMAGETYP="flat", EXPTIME=1.0)
+    assert drafted(tmp_path)[1].sensor.adc_bits == 12
+    write(tmp_path / "flat2.fits", np.clip(image, 0, 3000), IMAGETYP="flat", EXPTIME=1.0)
+    (tmp_path / "flat.fits").unlink()
+    text, recipe = drafted(tmp_path)
+    assert recipe.sensor.adc_bits is None and "largest code found is 3000" in text
+
+
+def test_frames_of_another_shape_and_damaged_files_are_told(folder):
+    write(folder / "z.fits", np.zeros((9, 9)), OBSTYPE="Zero", EXPOSURE=0.0)
+    (folder / "y.fits").write_bytes(b"no fits")
+    text = drafted(folder)[0]
+    assert "CHECK: 1 frames have 9 x 9 pixels" in text
+    assert "y.fits" in text
+
+
+def test_a_folder_without_frames_is_refused(tmp_path):
+    with pytest.raises(RequestError, match="no frames were found in it to draft a recipe from"):
+        drafted_recipe(tmp_path, stages=())
+
+
+def test_a_hostile_folder_name_cannot_break_the_recipe(tmp_path):
+    source = tmp_path / "a\n'b: {x"
+    write(source / "bias.fits", np.zeros((16, 16)), IMAGETYP="bias'\\", FILTER="#: '")
+    _, recipe = drafted(source)
+    assert recipe.name == "a\\u000a'b: {x"
+
+
+def test_keywords_are_chosen_by_what_their_values_say():
+    frames = [{"OBJECT": "Vega", "IMAGETYP": "bias", "EXPTIME": 3, "EXPOSURE": "long"}] * 3
+    assert guessed_keywords(frames) == {"kind": "IMAGETYP", "exposure": "EXPTIME"}
+
+
+@pytest.mark.skipif("SENSORGRADE_REAL_FRAMES" not in os.environ, reason="no real frames given")
+def test_a_real_folder_is_understood():
+    # Stated with the frames: 1536 x 1024, 10 um pixels, one output, no overscan, no darks.
+    (source,) = [
+        path for path in Path(os.environ["SENSORGRADE_REAL_FRAMES"]).iterdir() if path.is_dir()
+    ]
+    text, recipe = drafted(source)
+    assert recipe.sensor.pixel_pitch == 10.0 and recipe.sensor.outputs == {}
+    assert recipe.sensor.colour == "none"
+    assert recipe.frames.temperature == "CCD-TEMP" and recipe.frames.wavelength == "FILTER"
+    assert "no darks" in text and "#      5 bias" in text
