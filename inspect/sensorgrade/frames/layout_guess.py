@@ -117,8 +117,9 @@ def _steps(level: Image) -> bool:
     windows = np.lib.stride_tricks.sliding_window_view(level, width)
     medians = np.median(windows, axis=1)  # no single hot column moves them
     steps = medians[width:] - medians[:-width]
+    steps = steps - np.median(steps)  # a slope steps alike everywhere
+    scatter = 1.4826 * np.median(np.abs(steps))
     at_middle = steps[len(level) // 2 - width]
-    scatter = 1.4826 * np.median(np.abs(steps - np.median(steps)))
     return bool(abs(at_middle) > max(STEP * scatter, LEAST_STEP))
 
 
