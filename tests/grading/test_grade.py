@@ -195,7 +195,7 @@ def test_the_weightiest_reason_stands_first():
         "Read noise",  # misses both grades
         "Hot pixels",  # four times its limit
         "Dark current",  # 1.2 times
-        "Prnu",  # not measured
+        "PRNU",  # not measured
     ]
     assert found.reasons[0].endswith("; also misses engineering (at most 5.5 electron).")
 
@@ -210,4 +210,20 @@ def test_a_limit_has_its_own_rule():
         "Read noise is 4.90 ± 0.20 electron; a allows at most 5 electron: 0.1 electron inside it"
         " (0.5 standard uncertainties), but only 69.1 % sure to conform where 95 % is asked"
         " (guarded acceptance).",
+    )
+
+
+def test_a_finding_about_one_output_leaves_the_others_decided():
+    asked = recipe(("a", [limit("read_noise", "<=", 5.0)]), outputs=("left", "right"))
+    finding = Finding(
+        "warning", "read_noise, output left", "needs two bias frames", "", ("read_noise",)
+    )
+    right = measured("read_noise", 6.0, 0.1, scope="output right")
+    found = grade([right], [], [finding], recipe=asked)
+    assert found.decision == "reject"
+    assert found.reasons == (
+        "Read noise of output right is 6.00 ± 0.10 electron; a allows at most 5 electron:"
+        " 1 electron past it (10.0 standard uncertainties).",
+        "Read noise of output left: cannot be decided, needs two bias frames"
+        " (read_noise, output left); a allows at most 5 electron.",
     )

@@ -6,16 +6,9 @@ from sensorgrade.defects.defect import DefectCount
 from sensorgrade.grading import sentence
 from sensorgrade.grading.conformity import guard_factor, probability_of_conformity
 from sensorgrade.grading.decision import Decision, Graded, LimitResult
+from sensorgrade.grading.held import Known, held, known
 from sensorgrade.grading.rule import conformity_of_count, count_outcome, outcome
-from sensorgrade.grading.selection import (
-    Reading,
-    absent,
-    by_name,
-    combined,
-    reading_value,
-    readings,
-)
-from sensorgrade.grading.temperature import at_temperature
+from sensorgrade.grading.selection import Reading, reading_value
 from sensorgrade.measurement import Finding, Measurement
 from sensorgrade.recipe.model import Grade, Limit, Recipe
 
@@ -53,16 +46,13 @@ def grade(
     """
     if not recipe.grades:
         return Graded(None, "ungraded", (NO_GRADES,), ())
-    named = by_name(measurements, counts)
-    barred = {name: finding for finding in findings for name in finding.undecides}
+    of_device = known(measurements, counts, findings)
     results: list[LimitResult] = []
     met: str | None = None
     open_question = False
     for level in recipe.grades:
         of_grade = [
-            result
-            for limit in level.limits
-            for result in _results(level, limit, named, barred, recipe)
+            result for limit in level.limits for result in _results(level, limit, of_device, recipe)
         ]
         results += of_grade
         outcomes = {result.outcome for result in of_grade}
@@ -73,42 +63,15 @@ def grade(
     return Graded(met, decision, _reasons(results, met, recipe.grades), tuple(results))
 
 
-def _results(
-    level: Grade,
-    limit: Limit,
-    named: dict[str, list[Reading]],
-    barred: dict[str, Finding],
-    recipe: Recipe,
-) -> list[LimitResult]:
+def _results(level: Grade, limit: Limit, of_device: Known, recipe: Recipe) -> list[LimitResult]:
     """The outcome of one limit, for every place it holds for."""
-    found = readings(limit, named)
-    if not found:
-        place = limit.scope or (f"zone {limit.zone}" if limit.zone else "device")
-        return [_undecided(level, limit, place, "not measured")]
-    lacking = absent(limit, found, recipe.sensor)
-    results = [_undecided(level, limit, place, "not measured") for place in lacking]
-    held: list[Reading] = []
-    for reading in found:
-        if limit.temperature is None:
-            held.append(reading)
-            continue
-        there = at_temperature(
-            reading,
-            named,
-            celsius=limit.temperature,
-            tolerance=recipe.frames.temperature_tolerance,
-        )
-        if isinstance(there, str):
-            results.append(_undecided(level, limit, reading.scope, there, reading))
+    results = []
+    for place in held(limit, of_device, recipe=recipe):
+        if place.why is None and place.reading is not None:
+            results.append(_decided(level, limit, place.reading, recipe))
         else:
-            held.append(there)
-    for reading in combined(limit, held):
-        if limit.name in barred:
-            finding = barred[limit.name]
-            why = f"cannot be decided, {finding.seen.rstrip('.')} ({finding.where})"
-            results.append(_undecided(level, limit, reading.scope, why, reading))
-        else:
-            results.append(_decided(level, limit, reading, recipe))
+            why = place.why or "not measured"
+            results.append(_undecided(level, limit, place.scope, why, place.reading))
     return results
 
 

@@ -7,6 +7,8 @@ from sensorgrade.grading.decision import Outcome
 from sensorgrade.grading.selection import Reading
 from sensorgrade.recipe.model import Limit
 
+ACRONYMS = frozenset({"dsnu", "prnu", "cti", "adc"})
+
 
 def with_doubt(value: float, standard_uncertainty: float) -> str:
     """``"5.632 ± 0.081"``: two digits of the uncertainty, the value to the same place."""
@@ -21,8 +23,9 @@ def with_doubt(value: float, standard_uncertainty: float) -> str:
 
 
 def wording(name: str) -> str:
-    """A recipe's name as people write it: ``read_noise`` is read noise."""
-    return name.replace("_", " ")
+    """A recipe's name as people write it: ``read_noise`` is read noise, ``prnu`` is PRNU."""
+    words = name.split("_")
+    return " ".join(word.upper() if word in ACRONYMS else word for word in words)
 
 
 def allowed(limit: Limit) -> str:
