@@ -10,7 +10,7 @@ from sensorgrade.options import Declared
 from sensorgrade.recipe.declared import alternatives, nearest, options, value
 from sensorgrade.recipe.document import LONGEST, Mapping, Problems, Scalar, document, joined, shown
 from sensorgrade.recipe.limits import context, grades
-from sensorgrade.recipe.model import DecisionRule, FrameRules, Grade, Recipe, Sensor, Zone
+from sensorgrade.recipe.model import DecisionRule, FrameRules, Grade, LotPlan, Recipe, Sensor, Zone
 from sensorgrade.recipe.vocabulary import Vocabulary
 
 Options = TypeVar("Options")
@@ -22,6 +22,7 @@ TOP = {
     "frames": "How to tell what each file is; omit when the headers use the usual keywords",
     "stages": "What is measured, each stage with its options; a stage left out does not run",
     "zones": "Named parts of the image that limits may refer to",
+    "lot": "How the lot as a whole is accepted by a sample of its devices",
     "decision": "When a reading with its doubt counts as within a limit",
     "grades": "Limits for each grade, best first; a device takes the first whose limits it meets",
 }
@@ -103,6 +104,7 @@ def parse_recipe(text: str, vocabulary: Vocabulary, *, path: str) -> Recipe:
     sensor = _part(root, "sensor", Sensor, problems)
     frames = _part(root, "frames", FrameRules, problems)
     decision = _part(root, "decision", DecisionRule, problems)
+    lot = _part(root, "lot", LotPlan, problems)
     stages = _stages(root, vocabulary, problems)
     zones = _zones(root, problems)
     if sensor is not None:
@@ -127,6 +129,7 @@ def parse_recipe(text: str, vocabulary: Vocabulary, *, path: str) -> Recipe:
         path=path,
         text=text,
         sha256=hashlib.sha256(text.encode("utf-8")).hexdigest(),
+        lot=lot,
     )
 
 

@@ -219,6 +219,30 @@ class DecisionRule:
     )
 
 
+@dataclass(frozen=True, slots=True, kw_only=True)
+class LotPlan:
+    """Acceptance of the whole lot by attributes; without any key the lot is not judged.
+
+    Either a sample size and an acceptance number, or an acceptance quality limit from which
+    ISO 2859-1 gives both (single sampling, normal inspection, level II).
+    """
+
+    sample_size: int | None = number(
+        "Devices of the lot that are judged, drawn at random", default=None, minimum=1
+    )
+    acceptance_number: int | None = number(
+        "Devices of the sample that may miss every grade", default=None, minimum=0
+    )
+    quality_limit: float | None = quantity(
+        "%", "Acceptance quality limit (AQL), in place of the two above", default=None, minimum=0.0
+    )
+
+    def __post_init__(self) -> None:
+        stated = (self.sample_size is not None, self.acceptance_number is not None)
+        if stated[0] != stated[1] or (stated[0] and self.quality_limit is not None):
+            raise ValueError("expected sample_size with acceptance_number, or quality_limit alone")
+
+
 @dataclass(frozen=True, slots=True)
 class Recipe:
     """A validated recipe.
@@ -237,3 +261,4 @@ class Recipe:
     path: str
     text: str
     sha256: str
+    lot: LotPlan = LotPlan()

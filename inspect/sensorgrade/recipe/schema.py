@@ -11,7 +11,7 @@ from sensorgrade.options import Declared
 from sensorgrade.recipe.declared import annotations, declaration, required, stripped
 from sensorgrade.recipe.limits import LimitOptions
 from sensorgrade.recipe.load import REQUIRED, TOP, WORDS
-from sensorgrade.recipe.model import DecisionRule, FrameRules, Section, Sensor, Zone
+from sensorgrade.recipe.model import DecisionRule, FrameRules, LotPlan, Section, Sensor, Zone
 from sensorgrade.recipe.quantities import NUMBER, example
 from sensorgrade.recipe.section import PATTERN
 from sensorgrade.recipe.vocabulary import Vocabulary
@@ -30,11 +30,12 @@ def json_schema(vocabulary: Vocabulary) -> dict[str, Any]:
             {name: _optional(_options(cls)) for name, cls in vocabulary.stages.items()}
         ),
         "zones": {"type": "object", "additionalProperties": _options(Zone)},
+        "lot": _options(LotPlan),
         "decision": _options(DecisionRule),
         "grades": {"type": "object", "additionalProperties": _limits(vocabulary)},
     }
     parts["frames"]["properties"]["kinds"]["additionalProperties"] = {"enum": list(WORDS)}
-    for name in ("frames", "stages", "decision"):
+    for name in ("frames", "stages", "lot", "decision"):
         parts[name] = _optional(parts[name])
     return {
         "$schema": DIALECT,
