@@ -10,6 +10,7 @@ from astropy.io import fits
 from recipe.vocabulary_for_tests import VOCABULARY
 from sensorgrade.errors import RequestError
 from sensorgrade.frames.draft import drafted_recipe
+from sensorgrade.frames.inventory import find_devices
 from sensorgrade.frames.keyword_guess import guessed_keywords
 from sensorgrade.frames.layout_guess import guessed_layout
 from sensorgrade.recipe.load import parse_recipe
@@ -145,12 +146,26 @@ def test_names_tell_the_kind_where_headers_do_not(tmp_path):
         write(tmp_path / f"s_flat_{n}_2.5s.fits", rng.normal(8000, 9, (64, 64)))
     recipe = drafted(tmp_path)[1]
     assert recipe.frames.sorted_by == "name"
-    import re
+    (device,) = find_devices((tmp_path,), recipe)
+    assert [stack.name for stack in device.stacks] == ["bias", "dark, 60 s", "flat, 2.5 s"]
+    assert all(len(stack.frames) == 2 for stack in device.stacks)
 
-    pattern = re.compile(recipe.frames.pattern)
-    assert pattern.fullmatch("s_dark_1_60s.fits").groupdict() == {"kind": "dark", "exposure": "60"}
-    assert pattern.fullmatch("x/s_flat_0_2.5s.fits")["exposure"] == "2.5"
-    assert pattern.fullmatch("s_bias_0.fits").groupdict() == {"kind": "bias", "exposure": None}
+
+def test_folders_tell_the_kind_and_headers_the_exposure(tmp_path):
+    rng = np.random.default_rng(10)
+    for kind, seconds in (("Dark", 60.0), ("FLATS", 2.0)):
+        for n in range(2):
+            image = rng.normal(500, 3, (64, 64))
+            write(tmp_path / kind / f"frame_{n}.fits", image, EXPTIME=seconds)
+    recipe = drafted(tmp_path)[1]
+    (device,) = find_devices((tmp_path,), recipe)
+    assert [stack.name for stack in device.stacks] == ["dark, 60 s", "flat, 2 s"]
+
+
+def test_a_drafted_recipe_sorts_the_frames_it_was_drafted_from(folder):
+    (device,) = find_devices((folder,), drafted(folder)[1])
+    assert device.serial == "K7"
+    assert [len(stack.frames) for stack in device.stacks] == [3, 3, 3]
 
 
 def test_the_converter_s_bits_are_stated_only_where_its_last_code_is_reached(tmp_path):

@@ -260,50 +260,48 @@ def _frames(seen: Sequence[Seen]) -> list[str]:
     """The frames part."""
     values = [one.contents.values for one in seen]
     keywords = guessed_keywords(values)
-    if "kind" not in keywords:
-        return _by_name(seen)
-    lines = ["frames:", "  sorted_by: header"]
+    if "kind" in keywords:
+        lines = ["frames:", "  sorted_by: header"]
+        if "exposure" not in keywords:
+            lines.append("  # CHECK: no header keyword states the exposure time")
+    else:
+        lines = ["frames:", *_by_name(seen, timed="exposure" in keywords)]
     for key, keyword in keywords.items():
         lines.append(f"  {key}: {keyword}  # guess: {_examples(values, keyword)}")
-    if "exposure" not in keywords:
-        lines.append("  # CHECK: no header keyword states the exposure time")
     if "serial" not in keywords:
         lines.append("  # guess: no serial number in the headers, so the folder's name is used")
-    unknown = unknown_kinds(values, keywords["kind"])
+    unknown = unknown_kinds(values, keywords.get("kind", ""))
     if unknown:
         lines.append("  kinds:  # CHECK: say bias, dark, flat, x-ray, pump or ignore for each")
         lines += [f"    {_quoted(word)}: ignore  # {unknown[word]} frames" for word in unknown]
     return [*lines, ""]
 
 
-def _by_name(seen: Sequence[Seen]) -> list[str]:
-    """The frames part where only file or folder names tell the kind."""
+def _by_name(seen: Sequence[Seen], *, timed: bool) -> list[str]:
+    """How frames are sorted where only file or folder names tell the kind.
+
+    ``timed`` says that the headers state the exposure, so that the names need not.
+    """
     known = [one for one in seen if one.kind is not None]
     if not known:
         return [
-            "frames:",
             "  # CHECK: neither headers nor names tell what the frames are. Write a CSV file with",
             "  # the columns file, kind and exposure beside them:",
             "  # sorted_by: manifest",
             "  # manifest: manifest.csv",
-            "",
         ]
     words = sorted({word.lower() for one in known for word in NAME_WORD.findall(one.file.label)})
-    timed = sum(NAME_EXPOSURE.search(one.file.label) is not None for one in known)
-    kind = f"(?i:.*(?P<kind>{'|'.join(words)})"
-    exposure = r"(?:.*?[_-](?P<exposure>[0-9]+(?:\.[0-9]+)?)s(?![a-z]))?" if timed else ""
+    named = not timed and any(NAME_EXPOSURE.search(one.file.label) for one in known)
+    exposure = r"(?:.*?[_-](?P<exposure>[0-9]+(?:\.[0-9]+)?)s(?![a-z]))?" if named else ""
     lines = [
-        "frames:",
         "  sorted_by: name  # guess: no header keyword names the kind, file or folder names do",
-        f"  pattern: '{kind}{exposure}.*)'",
-        "  kind: kind",
-        "  exposure: exposure",
+        f"  pattern: '(?i:.*(?P<kind>{'|'.join(words)}){exposure})'",
     ]
-    if not timed:
-        lines.append("  # CHECK: no name states the exposure time, as _20s would; darks need it")
+    if not timed and not named:
+        lines.append("  # CHECK: neither headers nor names state the exposure; darks need it")
     if len(known) < len(seen):
         lines.append(f"  # CHECK: {len(seen) - len(known)} names hold no such word")
-    return [*lines, ""]
+    return lines
 
 
 def _examples(values: Sequence[dict[str, str | float | int | bool]], keyword: str) -> str:
