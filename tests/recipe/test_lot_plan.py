@@ -1,6 +1,6 @@
 import pytest
-from recipe.vocabulary_for_tests import VOCABULARY
 
+from recipe.vocabulary_for_tests import VOCABULARY
 from sensorgrade.errors import RecipeError
 from sensorgrade.recipe.load import parse_recipe
 from sensorgrade.recipe.model import LotPlan
