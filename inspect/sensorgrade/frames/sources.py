@@ -1,6 +1,7 @@
 """The files below a source, each once: loops, pipes and devices are told, never opened."""
 
 import os
+import re
 import stat
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
@@ -12,6 +13,7 @@ from sensorgrade.measurement import Finding
 from sensorgrade.recipe.document import printable
 
 DEEPEST = 32  # folders below the source
+DIGITS = re.compile(r"([0-9]{1,18})")
 LEDGER = "lot.sqlite"  # marks a folder that a run has written
 
 
@@ -127,20 +129,15 @@ def _walk(
             yield _remark(path, source, prefix, "note", seen_text, "rename it if it is a frame")
 
 
-def natural(name: str) -> list[tuple[int, int, str]]:
+def natural(name: str) -> tuple[list[tuple[int, int, str]], str]:
     """Sort key that puts ``frame10`` after ``frame9``."""
-    key: list[tuple[int, int, str]] = []
-    digits = ""
-    for letter in (*name, ""):
-        if letter and letter in "0123456789":
-            digits += letter
-            continue
-        if digits:
-            key.append((0, int(digits), ""))
-            digits = ""
-        if letter:
-            key.append((1, 0, letter))
-    return key
+    parts = DIGITS.split(name)
+    key = [
+        (0, int(part), "") if index % 2 else (1, 0, part)
+        for index, part in enumerate(parts)
+        if part
+    ]
+    return key, name
 
 
 def _inode(status: os.stat_result) -> tuple[int, int]:
