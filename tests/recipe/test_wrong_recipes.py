@@ -134,7 +134,10 @@ def test_a_mistake_in_the_sensor(sensor, sentence):
 PARTS = [  # (what follows the head in line 3, the sentence)
     ("sensors: {}", "sensors: no such key; nearest is sensor"),
     ("stage: {}", "stage: no such key; nearest is stages"),
-    ("qqq: x", "qqq: no such key; there are name, sensor, frames, stages, zones, lot, decision, grades"),
+    (
+        "qqq: x",
+        "qqq: no such key; there are name, sensor, frames, stages, zones, lot, decision, grades",
+    ),
     ("frames: {kind: }", None),
     ("frames: {kind: [a]}", "frames.kind: expected text, found a list"),
     ('frames: {kind: ""}', 'frames.kind: expected text, found ""'),
