@@ -2,6 +2,7 @@
 
 import hashlib
 import re
+from dataclasses import replace
 from pathlib import Path
 from typing import Any, TypeVar
 
@@ -9,7 +10,7 @@ from sensorgrade.errors import RecipeError
 from sensorgrade.options import Declared
 from sensorgrade.recipe.declared import alternatives, nearest, options, value
 from sensorgrade.recipe.document import LONGEST, Mapping, Problems, Scalar, document, joined, shown
-from sensorgrade.recipe.limits import context, grades
+from sensorgrade.recipe.limits import Context, context, grades
 from sensorgrade.recipe.model import DecisionRule, FrameRules, Grade, LotPlan, Recipe, Sensor, Zone
 from sensorgrade.recipe.vocabulary import Vocabulary
 
@@ -27,6 +28,7 @@ TOP = {
     "grades": "Limits for each grade, best first; a device takes the first whose limits it meets",
 }
 REQUIRED = ("name", "sensor")
+LIMIT_KEYS = ("grades", "decision", "lot")
 WORDS = ("bias", "dark", "flat", "x-ray", "pump", "ignore")  # what frames.kinds translates into
 NAME = re.compile(r"[^\W_][\w .+-]{0,30}")  # outputs and zones: no comma, they join scopes
 
@@ -111,11 +113,8 @@ def parse_recipe(text: str, vocabulary: Vocabulary, *, path: str) -> Recipe:
         _names(sensor.outputs, _mapping(root, "sensor", "outputs"), "sensor.outputs", problems)
     if frames is not None:
         _frame_rules(frames, root, problems)
-    graded: tuple[Grade, ...] = ()
-    if "grades" in root.entries:
-        entry = root.entries["grades"]
-        limits = context(vocabulary, frozenset(stages), sensor, zones)
-        graded = grades(entry.value, limits, entry.line, problems)
+    limits = context(vocabulary, frozenset(stages), sensor, zones)
+    graded = _grades(root, limits, problems)
     if len(problems):
         raise problems.error()
     return Recipe(
@@ -131,6 +130,61 @@ def parse_recipe(text: str, vocabulary: Vocabulary, *, path: str) -> Recipe:
         sha256=hashlib.sha256(text.encode("utf-8")).hexdigest(),
         lot=lot,
     )
+
+
+def load_limits(path: Path, vocabulary: Vocabulary, *, recipe: Recipe) -> Recipe:
+    """``recipe`` with the grades of another file: a whole recipe, or one of limits alone.
+
+    A file of limits alone has the keys grades, decision and lot; what it leaves out stays as it
+    is in ``recipe``, whose sensor, zones and stages the limits refer to.
+
+    Raises
+    ------
+    RecipeError
+        As `load_recipe`.
+    """
+    return parse_limits(_text(path), vocabulary, recipe=recipe, path=str(path))
+
+
+def parse_limits(text: str, vocabulary: Vocabulary, *, recipe: Recipe, path: str) -> Recipe:
+    """As `load_limits`, from a text that messages call ``path``."""
+    problems = Problems(path)
+    root = document(text, problems)
+    if not isinstance(root, Mapping) or "sensor" in root.entries:
+        return parse_recipe(text, vocabulary, path=path)
+    for name, entry in root.entries.items():
+        if name not in LIMIT_KEYS:
+            problems.add(
+                entry.line,
+                joined("", name),
+                f"a file of limits holds {alternatives(LIMIT_KEYS)}; a whole recipe starts with"
+                " name and sensor",
+            )
+    if "grades" not in root.entries:
+        problems.add(root.line, "", f"grades is missing ({TOP['grades']})")
+    graded = _grades(
+        root, context(vocabulary, frozenset(recipe.stages), recipe.sensor, recipe.zones), problems
+    )
+    decision = _part(root, "decision", DecisionRule, problems)
+    lot = _part(root, "lot", LotPlan, problems)
+    if len(problems):
+        raise problems.error()
+    return replace(
+        recipe,
+        grades=graded,
+        decision=decision if "decision" in root.entries else recipe.decision,
+        lot=lot if "lot" in root.entries else recipe.lot,
+        path=path,
+        text=text,
+        sha256=hashlib.sha256(text.encode("utf-8")).hexdigest(),
+    )
+
+
+def _grades(root: Mapping, limits: Context, problems: Problems) -> tuple[Grade, ...]:
+    if "grades" not in root.entries:
+        return ()
+    entry = root.entries["grades"]
+    return grades(entry.value, limits, entry.line, problems)
 
 
 def _name(root: Mapping, problems: Problems) -> str:

@@ -1,0 +1,1 @@
+"""The guides, as Markdown, and how they are found by topic."""
