@@ -5,6 +5,7 @@ A measured quantity is taken as normal about its reading with the stated standar
 of freedom. A count of defects is a whole number and has a distribution of its own.
 """
 
+from functools import cache
 from math import ceil, erfc, floor, sqrt
 from statistics import NormalDist
 
@@ -20,6 +21,7 @@ def normal_probability(z: float) -> float:
     return 0.5 * erfc(-z / sqrt(2.0))
 
 
+@cache
 def guard_factor(confidence: float) -> float:
     """Width of a guard band in standard uncertainties, one-sided; ``confidence`` in %.
 

@@ -84,6 +84,8 @@ def _bar(scope: str, findings: Sequence[Finding]) -> str | None:
 
     A finding about one output or colour ("read noise, output left") leaves the others alone.
     """
+    if not findings:
+        return None
     parts = set(scope.split(", "))
     for finding in findings:
         about = {

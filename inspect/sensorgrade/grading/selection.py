@@ -2,6 +2,7 @@
 
 from collections.abc import Iterable, Mapping
 from dataclasses import replace
+from functools import cache
 from itertools import product
 
 from sensorgrade.defects.defect import DefectCount
@@ -63,14 +64,20 @@ def absent(limit: Limit, found: list[Reading], sensor: Sensor) -> list[str]:
     A limit on every output is not met by the outputs that happened to be measured. Only asked
     where readings are given per output or per colour at all.
     """
-    scopes = [reading.scope for reading in found]
     if limit.scope is not None or not found:
         return []
+    scopes = tuple(reading.scope for reading in found)
+    return _lacking(scopes, tuple(sensor.outputs), sensor.colour != "none")
+
+
+@cache
+def _lacking(scopes: tuple[str, ...], names: tuple[str, ...], coloured: bool) -> list[str]:
+    """Places without a scope; the devices of a lot ask the same again and again."""
     outputs = [""]
-    if len(sensor.outputs) > 1 and any("output " in scope for scope in scopes):
-        outputs = [f"output {name}" for name in sensor.outputs]
+    if len(names) > 1 and any("output " in scope for scope in scopes):
+        outputs = [f"output {name}" for name in names]
     colours = [""]
-    if sensor.colour != "none" and any("colour " in scope for scope in scopes):
+    if coloured and any("colour " in scope for scope in scopes):
         colours = [f"colour {name}" for name in COLOUR_PLANES]
     places = [[part for part in pair if part] for pair in product(outputs, colours)]
     return [
@@ -109,6 +116,7 @@ def reading_value(reading: Reading) -> float:
     return float(reading.found) if isinstance(reading, DefectCount) else reading.value
 
 
+@cache
 def _has_part(scope: str, wanted: str) -> bool:
     """Whether one comma-joined part of ``scope`` is ``wanted``, as written or without its kind."""
     parts = scope.split(", ")
@@ -120,5 +128,6 @@ def _has_part(scope: str, wanted: str) -> bool:
     return wanted in names
 
 
+@cache
 def _of_zone(scope: str) -> bool:
     return any(part.startswith("zone ") for part in scope.split(", "))

@@ -1,5 +1,6 @@
 """Sentences that say how a reading stands to a limit."""
 
+from functools import cache
 from math import floor, log10
 
 from sensorgrade.defects.defect import DefectCount
@@ -22,12 +23,14 @@ def with_doubt(value: float, standard_uncertainty: float) -> str:
     return f"{value:.{place}f} ± {standard_uncertainty:.{place}f}"
 
 
+@cache
 def wording(name: str) -> str:
     """A recipe's name as people write it: ``read_noise`` is read noise, ``prnu`` is PRNU."""
     words = name.split("_")
     return " ".join(word.upper() if word in ACRONYMS else word for word in words)
 
 
+@cache
 def allowed(limit: Limit) -> str:
     """``"at most 5 electron"``."""
     words = "at most" if limit.relation == "<=" else "at least"
@@ -36,6 +39,7 @@ def allowed(limit: Limit) -> str:
     return f"{words} {limit.bound:g}{unit}{held}"
 
 
+@cache
 def compact(unit: str) -> str:
     """``electron / s`` as ``electron/s``."""
     return unit.replace(" / ", "/")
@@ -66,22 +70,29 @@ def standing(
 
 def missing(limit: Limit, *, grade: str, scope: str, why: str) -> str:
     """The reason of a limit that cannot be decided because a number is missing."""
-    place = "" if scope == "device" else f" of {scope}"
-    name = wording(limit.name)
-    return f"{name[0].upper()}{name[1:]}{place}: {why}; {grade} allows {allowed(limit)}."
+    return f"{_place(limit.name, scope)}: {why}; {grade} allows {allowed(limit)}."
 
 
 def _subject(reading: Reading, limit: Limit, unit: str) -> str:
-    name = wording(limit.name)
-    place = "" if reading.scope == "device" else f" of {reading.scope}"
-    if reading.scope.startswith("mean of "):
-        place = f", {reading.scope},"
-    named = f"{name[0].upper()}{name[1:]}{place}"
+    doubt = reading.standard_uncertainty
+    named = _place(limit.name, reading.scope)
     if isinstance(reading, DefectCount):
-        doubt = with_doubt(reading.expected, reading.standard_uncertainty)
-        return f"{named}: {reading.found} found ({doubt} by their probabilities)"
+        return (
+            f"{named}: {reading.found} found ({with_doubt(reading.expected, doubt)} by their"
+            " probabilities)"
+        )
     held = "" if limit.temperature is None else f", taken to {limit.temperature:g} degC,"
-    return f"{named}{held} is {with_doubt(reading.value, reading.standard_uncertainty)}{unit}"
+    return f"{named}{held} is {with_doubt(reading.value, doubt)}{unit}"
+
+
+@cache
+def _place(name: str, scope: str) -> str:
+    """The quantity and where: ``Read noise of output left``."""
+    words = wording(name)
+    words = words[0].upper() + words[1:]
+    if scope == "device":
+        return words
+    return f"{words}, {scope}," if scope.startswith("mean of ") else f"{words} of {scope}"
 
 
 def _ruling(

@@ -1,0 +1,157 @@
+"""``sensorgrade grade``: stored measurements against other limits, and what the limits cost."""
+
+import json
+from dataclasses import asdict
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import click
+
+if TYPE_CHECKING:
+    from sensorgrade.lot.regrade import Regraded, WhatIf
+
+
+@click.command(
+    epilog="\b\nExamples:\n"
+    "  sensorgrade grade reports/lot7 --limits tighter.yaml\n"
+    "  sensorgrade grade reports/lot7 --limits recipe.yaml --accept 180 --json\n\n"
+    "Exit status: 0 every device accepted; 1 some rejected or undecided; 2 the request is wrong."
+)
+@click.argument("run", type=click.Path(path_type=Path))
+@click.option(
+    "--limits",
+    required=True,
+    type=click.Path(path_type=Path),
+    help="Recipe, or a file with its grades, decision and lot alone.",
+)
+@click.option("--grade", "grade_name", help="Grade to examine; the lowest if not given.")
+@click.option(
+    "--accept", type=click.IntRange(min=1), help="Find what to concede so that so many reach it."
+)
+@click.option("--json", "as_json", is_flag=True, help="Print JSON instead of text.")
+@click.option("--quiet", is_flag=True, help="Print nothing; the exit status tells.")
+@click.pass_context
+def command(
+    ctx: click.Context,
+    run: Path,
+    limits: Path,
+    grade_name: str | None,
+    accept: int | None,
+    as_json: bool,
+    quiet: bool,
+) -> None:
+    """Grade the devices of RUN again, without touching a frame.
+
+    RUN is the folder an inspection wrote to. It is left as it is; the answer is printed: yields
+    with 95 % intervals, devices whose grade changes, what each limit costs.
+    """
+    from sensorgrade.lot.regrade import regrade, what_if
+    from sensorgrade.stages import vocabulary
+
+    regraded = regrade(run, limits=limits, vocabulary=vocabulary())
+    recipe = regraded.recipe
+    examined = None
+    if recipe.grades:
+        examined = what_if(
+            regraded.stored.devices,
+            recipe=recipe,
+            grade_name=grade_name or recipe.grades[-1].name,
+            wanted=accept,
+        )
+    if as_json:
+        click.echo(json.dumps(_document(regraded, examined), indent=1, ensure_ascii=False))
+    elif not quiet:
+        _print_grades(regraded)
+        if examined is not None:
+            _print_costs(examined, accept)
+    done = all(one.decision in ("accept", "ungraded") for one in regraded.graded)
+    ctx.exit(0 if done else 1)
+
+
+def _print_grades(regraded: "Regraded") -> None:
+    devices = len(regraded.graded)
+    undecided = sum(one.decision == "undecided" for one in regraded.graded)
+    rejected = sum(one.decision == "reject" for one in regraded.graded)
+    click.echo(f"{devices} devices, {rejected} rejected, {undecided} undecided")
+    for of_grade in regraded.yields:
+        interval = of_grade.wilson
+        click.echo(
+            f"  {of_grade.grade} or better: {of_grade.reached}"
+            f" ({_percent(of_grade.reached / devices if devices else 0)},"
+            f" 95 % interval {_percent(interval.low)} to {_percent(interval.high)})"
+        )
+    if regraded.lot is not None:
+        click.echo(f"Lot: {regraded.lot.outcome}. {regraded.lot.sentence}")
+    changed = regraded.changed
+    click.echo(f"{len(changed)} devices change")
+    for at in changed:
+        now = regraded.graded[at]
+        before = regraded.stored.grades[at] or regraded.stored.decisions[at]
+        reason = f"  {now.reasons[0]}" if now.reasons else ""
+        click.echo(
+            f"  {regraded.stored.devices[at].serial}: {before} -> {now.grade or now.decision}{reason}"
+        )
+
+
+def _print_costs(examined: "WhatIf", accept: int | None) -> None:
+    from sensorgrade.grading.sentence import allowed, wording
+
+    click.echo(f"Limits of {examined.grade}, the dearest first")
+    for cost in examined.costs:
+        if cost.missed:
+            click.echo(
+                f"  {wording(cost.limit.name)} {allowed(cost.limit)}: missed by {cost.missed}, by"
+                f" {cost.alone} as their only miss, {cost.undecidable} without a value"
+            )
+    if accept is None:
+        return
+    if examined.concessions is None:
+        click.echo(f"No easing accepts {accept} devices: too many lack a measurement")
+        return
+    if not examined.concessions.eased:
+        click.echo(f"{examined.concessions.accepted} devices are accepted as the limits stand")
+        return
+    click.echo(f"To accept {accept} devices, concede")
+    for eased in examined.concessions.eased:
+        bound = f"{eased.limit.relation} {eased.bound:.6g} {eased.limit.unit}".rstrip()
+        click.echo(f"  {wording(eased.limit.name)} {bound} in place of {eased.limit.bound:g}")
+    click.echo(
+        f"  which accepts {examined.concessions.accepted}, gaining"
+        f" {', '.join(examined.concessions.gained)}"
+    )
+
+
+def _percent(share: float) -> str:
+    return f"{100 * share:.1f} %"
+
+
+def _document(regraded: "Regraded", examined: "WhatIf | None") -> dict[str, Any]:
+    return {
+        "devices": [
+            {
+                "serial": device.serial,
+                "grade": now.grade,
+                "decision": now.decision,
+                "reasons": list(now.reasons),
+                "grade_before": before,
+                "decision_before": decision,
+            }
+            for device, now, before, decision in zip(
+                regraded.stored.devices,
+                regraded.graded,
+                regraded.stored.grades,
+                regraded.stored.decisions,
+                strict=True,
+            )
+        ],
+        "yields": [asdict(one) for one in regraded.yields],
+        "lot": None if regraded.lot is None else asdict(regraded.lot),
+        "examined": None
+        if examined is None
+        else {
+            "grade": examined.grade,
+            "costs": [asdict(one) for one in examined.costs],
+            "statistics": [asdict(one) for one in examined.statistics],
+            "concessions": None if examined.concessions is None else asdict(examined.concessions),
+        },
+    }

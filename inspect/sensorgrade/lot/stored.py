@@ -1,0 +1,129 @@
+"""What a run's ledger holds of every device, as grading wants it: no frame is touched."""
+
+import json
+import sqlite3
+from collections.abc import Iterable
+from dataclasses import dataclass
+from pathlib import Path
+
+from sensorgrade.defects.defect import DefectCount
+from sensorgrade.errors import RequestError
+from sensorgrade.grading.held import DeviceReadings
+from sensorgrade.lot.database import open_for_reading
+from sensorgrade.measurement import Finding, Measurement
+
+
+@dataclass(frozen=True, slots=True)
+class StoredLot:
+    """The inspected devices in order of serial, with grade and decision as they were.
+
+    ``recipe`` and ``recipe_text`` are those of the last run; ``failed`` are the serials of
+    devices that could not be inspected.
+    """
+
+    devices: tuple[DeviceReadings, ...]
+    grades: tuple[str | None, ...]
+    decisions: tuple[str, ...]
+    recipe: str
+    recipe_text: str
+    failed: tuple[str, ...]
+
+
+def stored_lot(folder: Path, *, names: Iterable[str] | None = None) -> StoredLot:
+    """Read the ledger of a run.
+
+    Parameters
+    ----------
+    folder : Path
+        Where the run wrote to.
+    names : iterable of str, optional
+        Measurements and counts to read; all of them when not given.
+
+    Raises
+    ------
+    RequestError
+        There is no ledger, or it holds no run.
+    """
+    connection = open_for_reading(folder)
+    try:
+        run = connection.execute(
+            "SELECT recipe, recipe_text FROM runs ORDER BY run DESC LIMIT 1"
+        ).fetchone()
+        if run is None:
+            raise RequestError(f"{folder}: the ledger holds no run yet; inspect devices first")
+        rows = connection.execute(
+            "SELECT device, serial, grade, decision FROM devices WHERE outcome = 'inspected'"
+            " ORDER BY serial, device"
+        ).fetchall()
+        failed = connection.execute(
+            "SELECT serial FROM devices WHERE outcome = 'failed' ORDER BY serial"
+        ).fetchall()
+        measurements = _measurements(connection, names)
+        counts = _counts(connection, names)
+        findings = _findings(connection)
+    finally:
+        connection.close()
+    return StoredLot(
+        devices=tuple(
+            DeviceReadings(
+                serial,
+                tuple(measurements.get(device, ())),
+                tuple(counts.get(device, ())),
+                tuple(findings.get(device, ())),
+            )
+            for device, serial, _, _ in rows
+        ),
+        grades=tuple(grade for _, _, grade, _ in rows),
+        decisions=tuple(decision for _, _, _, decision in rows),
+        recipe=run[0],
+        recipe_text=run[1],
+        failed=tuple(serial for (serial,) in failed),
+    )
+
+
+def _measurements(
+    connection: sqlite3.Connection, names: Iterable[str] | None
+) -> dict[int, list[Measurement]]:
+    clause, wanted = _among("name", names)
+    found: dict[int, list[Measurement]] = {}
+    for device, *values in connection.execute(
+        "SELECT device, name, scope, value, standard_uncertainty, unit, n FROM measurements"
+        f"{clause} ORDER BY device, place",
+        wanted,
+    ):
+        found.setdefault(device, []).append(Measurement(*values))
+    return found
+
+
+def _counts(
+    connection: sqlite3.Connection, names: Iterable[str] | None
+) -> dict[int, list[DefectCount]]:
+    clause, wanted = _among("kind", names)
+    found: dict[int, list[DefectCount]] = {}
+    for device, *values in connection.execute(
+        "SELECT device, kind, scope, found, expected, standard_uncertainty FROM defect_counts"
+        f"{clause} ORDER BY device, place",
+        wanted,
+    ):
+        found.setdefault(device, []).append(DefectCount(*values))
+    return found
+
+
+def _findings(connection: sqlite3.Connection) -> dict[int, list[Finding]]:
+    """Findings that undecide something; the others do not matter to grading."""
+    found: dict[int, list[Finding]] = {}
+    for device, severity, where, seen, remedy, undecides in connection.execute(
+        'SELECT device, severity, "where", seen, remedy, undecides FROM findings'
+        " WHERE undecides <> '[]' ORDER BY device, place"
+    ):
+        names = tuple(json.loads(undecides))
+        found.setdefault(device, []).append(Finding(severity, where, seen, remedy, names))
+    return found
+
+
+def _among(column: str, names: Iterable[str] | None) -> tuple[str, list[str]]:
+    """A WHERE clause that keeps the names asked for."""
+    if names is None:
+        return "", []
+    wanted = sorted(set(names))
+    return f" WHERE {column} IN ({', '.join('?' * len(wanted))})", wanted
