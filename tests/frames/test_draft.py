@@ -10,6 +10,8 @@ from astropy.io import fits
 from recipe.vocabulary_for_tests import VOCABULARY
 from sensorgrade.errors import RequestError
 from sensorgrade.frames.draft import drafted_recipe
+from sensorgrade.frames.extension_guess import guessed_extensions
+from sensorgrade.frames.geometry import geometry
 from sensorgrade.frames.inventory import find_devices
 from sensorgrade.frames.keyword_guess import guessed_keywords
 from sensorgrade.frames.layout_guess import guessed_layout
@@ -214,3 +216,37 @@ def test_a_real_folder_is_understood():
     assert recipe.sensor.colour == "none"
     assert recipe.frames.temperature == "CCD-TEMP" and recipe.frames.wavelength == "FILTER"
     assert "no darks" in text and "#      5 bias" in text
+
+
+def test_outputs_in_extensions_are_placed_as_their_headers_say(tmp_path):
+    rng = np.random.default_rng(12)
+    for n, light in enumerate((0, 0, 9000, 9000)):
+        units = [fits.PrimaryHDU()]
+        units[0].header["IMAGETYP"] = "flat" if light else "bias"
+        units[0].header["EXPTIME"] = 3.0
+        for name, place in (("AMP1", "[1:64,1:48]"), ("AMP2", "[128:65,1:48]")):
+            image = rng.normal(500, 3, (48, 72))
+            image[:, :64] += light
+            unit = fits.ImageHDU(image.astype(np.uint16), name=name)
+            unit.header["DETSEC"] = place
+            units.append(unit)
+        fits.HDUList(units).writeto(tmp_path / f"f{n}.fits")
+    text, recipe = drafted(tmp_path)
+    left, right = recipe.sensor.outputs["AMP1"], recipe.sensor.outputs["AMP2"]
+    assert (left.extension, right.extension) == ("AMP1", "AMP2")
+    assert left.image == right.image == Section(0, 48, 0, 64)
+    assert left.overscan == Section(0, 48, 64, 72)
+    assert (left.place, right.place) == (Section(0, 48, 0, 64), Section(0, 48, 64, 128))
+    assert "CHECK: AMP2 is stored in the order of reading" in text and "CHECK: AMP1" not in text
+    (device,) = find_devices((tmp_path,), recipe)
+    shapes = {key: plane.shape for key, plane in device.frames[0].planes.items()}
+    assert geometry(recipe.sensor, shapes).shape == (48, 128)
+
+
+def test_extensions_without_a_place_are_laid_side_by_side():
+    dark = np.full((20, 30), 100.0)
+    guess = guessed_extensions({"1": (dark, None), "2": (dark, None)}, {"1": None, "2": "[1:5]"})
+    assert [output.place for output in guess.outputs.values()] == [
+        Section(0, 20, 0, 30),
+        Section(0, 20, 30, 60),
+    ]

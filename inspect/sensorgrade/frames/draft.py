@@ -16,6 +16,8 @@ from numpy.typing import NDArray
 from sensorgrade.errors import FrameError, RequestError
 from sensorgrade.frames.contents import FileContents, Layout
 from sensorgrade.frames.decode import read_plane
+from sensorgrade.frames.extension_guess import guessed_extensions, image_extensions, mirrored
+from sensorgrade.frames.fits import read_fits
 from sensorgrade.frames.frame import KINDS
 from sensorgrade.frames.geometry import fits_section
 from sensorgrade.frames.keyword_guess import guessed_keywords, pixel_pitch, unknown_kinds
@@ -43,8 +45,8 @@ class Seen:
 
     @property
     def shape(self) -> tuple[int, int]:
-        """(rows, columns) of the only image."""
-        return self.contents.planes[""].shape
+        """(rows, columns) of the first image."""
+        return next(iter(self.contents.planes.values())).shape
 
 
 def drafted_recipe(folder: Path, *, stages: Sequence[str]) -> str:
@@ -60,17 +62,28 @@ def drafted_recipe(folder: Path, *, stages: Sequence[str]) -> str:
     """
     checked_sources((folder,))
     files = [found for found in files_below(folder, prefix="") if isinstance(found, FoundFile)]
-    seen, refused = _read(files[:MOST_FRAMES])
+    places = _extensions(files)
+    seen, refused = _read(files[:MOST_FRAMES], Layout(tuple(places)))
     if not seen:
         why = f"; the first that was refused: {refused[0]}" if refused else ""
         raise RequestError(f"{folder}: no frames were found in it to draft a recipe from{why}")
     shape = Counter(one.shape for one in seen).most_common(1)[0][0]
     alike = [one for one in seen if one.shape == shape]
-    dark = _mean(alike, ("bias", "dark"))
-    lit = _mean(alike, ("flat",))
+    means = {
+        key: (_mean(alike, ("bias", "dark"), key), _mean(alike, ("flat",), key))
+        for key in places or ("",)
+    }
+    layout = guessed_extensions(means, places) if places else guessed_layout(*means[""])
+    told = all(dark is not None and lit is not None for dark, lit in means.values())
     lines = [
         *_head(folder, files, seen, refused, shape),
-        *_sensor(alike, guessed_layout(dark, lit), dark, lit),
+        *_sensor(alike, layout, told=told),
+        *(
+            f"  # CHECK: {name} is stored in the order of reading, mirrored against the detector"
+            for name, place in places.items()
+            if mirrored(place)
+        ),
+        "",
         *_frames(seen),
         *_stages(seen, stages),
         *GRADES,
@@ -78,7 +91,13 @@ def drafted_recipe(folder: Path, *, stages: Sequence[str]) -> str:
     return "\n".join(lines) + "\n"
 
 
-def _read(files: Sequence[FoundFile]) -> tuple[list[Seen], list[str]]:
+def _extensions(files: Sequence[FoundFile]) -> dict[str, str | None]:
+    """The extensions of the first FITS file that holds several images; empty without one."""
+    fits_files = [file for file in files if reader_of(file.path.name) is read_fits]
+    return image_extensions(fits_files[0].path) if fits_files else {}
+
+
+def _read(files: Sequence[FoundFile], layout: Layout) -> tuple[list[Seen], list[str]]:
     """Frames whose headers can be read, and sentences on those that cannot."""
     contents: list[tuple[FoundFile, FileContents]] = []
     refused = []
@@ -86,7 +105,7 @@ def _read(files: Sequence[FoundFile]) -> tuple[list[Seen], list[str]]:
         reader = reader_of(file.path.name)
         assert reader is not None  # files_below passes over the others
         try:
-            contents.append((file, reader(file.path, Layout())))
+            contents.append((file, reader(file.path, layout)))
         except FrameError as error:
             refused.append(printable(str(error), 300))
         except OSError as error:
@@ -103,13 +122,13 @@ def _kind(label: str, contents: FileContents, keyword: str | None) -> str | None
     return kind_of(words[-1], {}) if words else None
 
 
-def _mean(frames: Sequence[Seen], kinds: tuple[str, ...]) -> NDArray[np.float64] | None:
-    """Mean raw image of a few frames of these kinds; None without any [DN]."""
+def _mean(frames: Sequence[Seen], kinds: tuple[str, ...], key: str) -> NDArray[np.float64] | None:
+    """Mean raw image [DN] of a few frames of these kinds, of plane ``key``; None without any."""
     chosen = [one for kind in kinds for one in frames if one.kind == kind][:JOINED]
     total: NDArray[np.float64] | None = None
     count = 0
     for one in chosen:
-        plane = one.contents.planes[""]
+        plane = one.contents.planes[key]
         try:
             image = read_plane(plane, 0, plane.shape[0]).astype(np.float64)
         except (FrameError, OSError):
@@ -174,13 +193,8 @@ def _described(one: Seen, keywords: dict[str, str]) -> str:
     return ", ".join(parts)
 
 
-def _sensor(
-    frames: Sequence[Seen],
-    layout: LayoutGuess,
-    dark: NDArray[np.float64] | None,
-    lit: NDArray[np.float64] | None,
-) -> list[str]:
-    """The sensor part."""
+def _sensor(frames: Sequence[Seen], layout: LayoutGuess, *, told: bool) -> list[str]:
+    """The sensor part; ``told`` says that there were dark and lit frames to tell it by."""
     overscan = any(output.overscan for output in layout.outputs.values())
     lines = [
         f"sensor:  # {frames[0].shape[1]} x {frames[0].shape[0]} pixels (x by y) in a raw frame",
@@ -198,27 +212,29 @@ def _sensor(
             f"  colour: {layout.colour}  # guess: the greens are sure; red was taken to be",
             "                # stronger than blue, CHECK with a red light",
         ]
-    if dark is None or lit is None:
+    if not told:
         lines.append(
             "  # CHECK: without bias (or dark) and flat, overscan cannot be told from image;"
             " give outputs"
         )
-    elif not layout.outputs:
+    if told and not layout.outputs:
         lines.append("  # guess: one output and no overscan, all rows and columns respond to light")
-    else:
+    elif layout.outputs:
         lines += [
             "  # guess: overscan stays dark in flats, outputs have their own bias levels. CHECK",
             "  # the sections against the data sheet, and the corner that each output reads first.",
             "  outputs:",
         ]
     for name, output in layout.outputs.items():
-        lines.append(f"    {name}:")
-        for key in ("image", "overscan", "parallel_overscan", "prescan"):
+        lines.append(f"    {_quoted(name) if output.extension else name}:")
+        if output.extension is not None:
+            lines.append(f"      extension: {_quoted(output.extension)}")
+        for key in ("image", "overscan", "parallel_overscan", "prescan", "place"):
             section = getattr(output, key)
             if section is not None:
                 lines.append(f'      {key}: "{fits_section(section)}"')
         lines.append(f"      corner: {output.corner}")
-    return [*lines, ""]
+    return lines
 
 
 def _converter(frames: Sequence[Seen]) -> list[str]:
@@ -228,7 +244,7 @@ def _converter(frames: Sequence[Seen]) -> list[str]:
     for kind in ("flat", "x-ray", "dark", "bias", "pump", None):
         chosen = [one for one in frames if one.kind == kind][-JOINED:]
         for one in chosen:
-            plane = one.contents.planes[""]
+            plane = next(iter(one.contents.planes.values()))
             if plane.dtype != "uint16":
                 return [
                     "  # guess: samples are no 16-bit whole numbers; give adc_bits if they were"
