@@ -10,6 +10,7 @@ from sensorgrade.errors import RecipeError
 from sensorgrade.recipe.document import LONGEST
 from sensorgrade.recipe.load import load_options, load_recipe, parse_recipe, recipe_title
 from sensorgrade.recipe.model import DecisionRule, FrameRules, Limit, Section
+from sensorgrade.recipe.quantities import example, quantity
 
 RECIPE = """\
 name: two-output CCD
@@ -225,3 +226,8 @@ def test_any_options_class_can_be_read_from_a_file_of_its_own(tmp_path):
         f"{path}:1  pairs: expected a whole number, 1 or more, found 0",
         f"{path}:2  pears: no such key; nearest is pairs",
     )
+
+
+def test_a_quantity_per_electron_is_written_with_a_slash():
+    assert example("1 / electron") == "10 / electron"
+    assert quantity("-3e-6 / electron", "1 / electron") == -3e-6

@@ -87,7 +87,8 @@ def quantity(text: str, unit: str) -> float:
 
 def example(unit: str) -> str:
     """A quantity as one would write it, for messages and for the schema."""
-    return f"{10 if unit not in ('%', 'degC') else 20} {unit}".strip()
+    number = 20 if unit in ("%", "degC", "deg_C") else 10
+    return f"{number} {unit.removeprefix('1 ').replace('deg_C', 'degC')}".strip()
 
 
 def converted(value: float, given: str, unit: str) -> float:
