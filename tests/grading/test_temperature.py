@@ -32,8 +32,9 @@ def test_the_measured_energy_translates_with_its_uncertainty():
     value = rng.normal(0.5, 0.01, 200_000)
     first = rng.normal(-30.0, 0.5, 200_000) + 273.15
     slope = rng.normal(0.62, 0.02, 200_000)
+    # Over 10 K the law's curvature changes ln D by a few thousandths.
     there = value * np.exp(slope / 8.617333e-5 * (1 / first - 1 / 253.15))
-    assert_allclose(found.value, np.median(there), rtol=2e-3)
+    assert_allclose(found.value, np.median(there), rtol=8e-3)
     assert_allclose(found.standard_uncertainty, there.std(), rtol=0.02)
 
 
@@ -58,3 +59,11 @@ def test_what_has_no_law_is_taken_at_a_like_temperature_only():
         readings = [measured("read_noise", 4.0, 0.1), temperature(-20.0)]
         (only,) = grade(readings, [], [], recipe=asked).limits
         assert only.outcome == expected
+
+
+def test_the_energy_of_generation_gives_generations_own_ratio():
+    energy = measured("activation_energy", silicon.generation_slope(243.15), 0.0, unit="eV")
+    for at in (-60.0, 0.0, 25.0):
+        found = dark(0.5, 0.0, temperature(-30.0), energy, at=at, bound=100.0)
+        expected = 0.5 * silicon.dark_current_ratio(at + 273.15, 243.15)
+        assert found.value == pytest.approx(expected, rel=1e-9)

@@ -87,10 +87,9 @@ def _print_grades(regraded: "Regraded") -> None:
     for at in changed:
         now = regraded.graded[at]
         before = regraded.stored.grades[at] or regraded.stored.decisions[at]
+        serial = regraded.stored.devices[at].serial
         reason = f"  {now.reasons[0]}" if now.reasons else ""
-        click.echo(
-            f"  {regraded.stored.devices[at].serial}: {before} -> {now.grade or now.decision}{reason}"
-        )
+        click.echo(f"  {serial}: {before} -> {now.grade or now.decision}{reason}")
 
 
 def _print_costs(examined: "WhatIf", accept: int | None) -> None:

@@ -36,12 +36,12 @@ def at_temperature(
 
     Notes
     -----
-    With an activation energy E, ln D changes by L = -(E/k) (1/T2 - 1/T1), with the uncertainty of
-    E and, through E / kT1², of the temperature. Without E, silicon gives a range: generation in
-    the depleted layer follows T^1.5 exp(-Eg/2kT), diffusion follows exactly its square, so L lies
-    between the generation law's value and twice that. Its middle is used, with the standard
-    uncertainty of a rectangular distribution (JCGM 100:2008, 4.3.7). The uncertainty of the
-    ratio is kept as that of its logarithm, good to second order.
+    ln D = c + 3/2 ln T - f Eg(T)/kT, with f = 1/2 for generation in the depleted silicon and f = 1
+    (3/2 ln T doubled too) for diffusion. An activation energy -d ln D / d(1/kT) measured at T1
+    gives f, and its uncertainty goes through to the other temperature, as does that of T1.
+    Without one, the change L of ln D lies between generation's and diffusion's, which is exactly
+    twice that: the middle is used, with the standard uncertainty of a rectangular distribution
+    (JCGM 100:2008, 4.3.7). The uncertainty is that of the logarithm, good to second order.
     """
     measured = _of_same_scope(named.get(TEMPERATURE, []), reading.scope)
     name = reading.name if isinstance(reading, Measurement) else reading.kind
@@ -71,13 +71,15 @@ def _change_of_logarithm(
     """Change of ln D from the measured temperature to ``celsius``, and its uncertainty."""
     first = measured.value + silicon.ZERO_CELSIUS
     second = celsius + silicon.ZERO_CELSIUS
+    generation = log(silicon.dark_current_ratio(second, first))
     if energy is not None:
-        step = (1.0 / first - 1.0 / second) / silicon.BOLTZMANN.value
-        change = energy.value * step
+        thermal = 1.5 * silicon.BOLTZMANN.value * first
+        powers = 1.5 * log(second / first)
+        per_energy = (generation - powers) / (silicon.generation_slope(first) - thermal)
+        change = powers + per_energy * (energy.value - thermal)
         slope = energy.value
-        doubt = abs(step) * energy.standard_uncertainty
+        doubt = abs(per_energy) * energy.standard_uncertainty
     else:
-        generation = log(silicon.dark_current_ratio(second, first))
         change = 1.5 * generation
         slope = 1.5 * silicon.generation_slope(first)
         doubt = abs(generation) / (2.0 * sqrt(3.0))
