@@ -1,6 +1,5 @@
 """Stored devices held against other limits, in seconds and without any frame."""
 
-import re
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -26,13 +25,9 @@ from sensorgrade.grading.what_if import (
     tightest,
 )
 from sensorgrade.lot.stored import StoredLot, stored_lot
-from sensorgrade.recipe.load import parse_recipe
+from sensorgrade.recipe.load import load_limits, parse_recipe
 from sensorgrade.recipe.model import Recipe
 from sensorgrade.recipe.vocabulary import Vocabulary
-
-# Parts of a recipe that judge; the others say how devices were measured and cannot change now.
-JUDGING = ("grades", "decision", "lot")
-TOP_KEY = re.compile(r"^([A-Za-z_][\w-]*)\s*:", re.MULTILINE)
 
 
 @dataclass(frozen=True, slots=True)
@@ -73,7 +68,10 @@ def regrade(folder: Path, *, limits: Path, vocabulary: Vocabulary) -> Regraded:
     RequestError, RecipeError
         No ledger, an unreadable file, or mistakes in it, one line each.
     """
-    recipe = limits_recipe(limits, stored_lot(folder, names=()).recipe_text, vocabulary)
+    run = stored_lot(folder, names=())
+    recipe = load_limits(
+        limits, vocabulary, recipe=parse_recipe(run.recipe_text, vocabulary, path=run.recipe)
+    )
     names = {limit.name for level in recipe.grades for limit in level.limits}
     stored = stored_lot(folder, names=names | {TEMPERATURE, ENERGY})
     graded = tuple(
@@ -129,38 +127,3 @@ def what_if(
         ),
         concessions=None if wanted is None else concessions(lot, wanted=wanted),
     )
-
-
-def limits_recipe(file: Path, run_text: str, vocabulary: Vocabulary) -> Recipe:
-    """The recipe of a run with what ``file`` states in place of its own.
-
-    A file with ``sensor`` is a recipe of its own. Any other holds only what judges; the run's
-    other parts are put behind it, so that lines in messages are those of the file.
-
-    Raises
-    ------
-    RequestError, RecipeError
-        The file cannot be read, holds parts that only new frames could answer, or has mistakes.
-    """
-    try:
-        text = file.read_text(encoding="utf-8")
-    except (OSError, UnicodeDecodeError) as error:
-        raise RequestError(f"{file}: cannot be read as text ({error}); expected limits") from error
-    stated = TOP_KEY.findall(text)
-    if "sensor" not in stated:
-        beyond = [name for name in stated if name not in (*JUDGING, "name")]
-        if beyond:
-            raise RequestError(
-                f"{file}: {', '.join(beyond)} cannot change without new frames; expected"
-                f" {', '.join(JUDGING)}, or a whole recipe"
-            )
-        text = "\n".join([text, *_other_parts(run_text, stated)])
-    return parse_recipe(text, vocabulary, path=str(file))
-
-
-def _other_parts(text: str, stated: list[str]) -> list[str]:
-    """The top-level parts of a recipe's text whose keys were not stated elsewhere."""
-    starts = [(match.start(), match[1]) for match in TOP_KEY.finditer(text)]
-    ends = [start for start, _ in starts[1:]] + [len(text)]
-    parts = zip(starts, ends, strict=True)
-    return [text[start:end] for (start, name), end in parts if name not in stated]
