@@ -3,9 +3,9 @@
 import dataclasses
 import gzip
 import zlib
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from pathlib import Path
-from typing import Any, BinaryIO, cast
+from typing import IO, Any, BinaryIO, cast
 
 import numpy as np
 from numpy.typing import NDArray
@@ -83,14 +83,36 @@ def read_plane(
         return plane.data[row_start:row_stop]
     if plane.coding is not None:
         return np.concatenate(list(_bands(plane)))[row_start:row_stop]
-    path = cast(Path, plane.path)
+    with cast(Path, plane.path).open("rb") as file:
+        return _stored_rows(file, plane, row_start, row_stop)
+
+
+def read_rows(plane: Plane, rows: Sequence[int]) -> NDArray[np.uint16] | NDArray[np.float32]:
+    """Native samples of single rows, shape (len(rows), N) [DN], of a plane without coding.
+
+    Raises
+    ------
+    FrameError
+        The file is damaged or shorter than it was.
+    OSError
+        The file cannot be opened.
+    """
+    if plane.data is not None:
+        return plane.data[list(rows)]
+    with cast(Path, plane.path).open("rb", buffering=0) as file:
+        return np.concatenate([_stored_rows(file, plane, row, row + 1) for row in rows])
+
+
+def _stored_rows(
+    file: IO[bytes], plane: Plane, row_start: int, row_stop: int
+) -> NDArray[np.uint16] | NDArray[np.float32]:
     columns = plane.shape[1]
     stored = np.dtype(plane.dtype)
-    with path.open("rb") as file:
-        file.seek(plane.offset + row_start * columns * stored.itemsize)
-        data = file.read((row_stop - row_start) * columns * stored.itemsize)
-    if len(data) != (row_stop - row_start) * columns * stored.itemsize:
-        raise FrameError(f"{path}: truncated since it was first looked at; copy it again")
+    size = (row_stop - row_start) * columns * stored.itemsize
+    file.seek(plane.offset + row_start * columns * stored.itemsize)
+    data = file.read(size)
+    if len(data) != size:
+        raise FrameError(f"{plane.path}: truncated since it was first looked at; copy it again")
     rows = np.frombuffer(data, stored).reshape(row_stop - row_start, columns)
     if plane.swap:
         rows = rows.byteswap()
