@@ -250,3 +250,27 @@ def test_extensions_without_a_place_are_laid_side_by_side():
         Section(0, 20, 0, 30),
         Section(0, 20, 30, 60),
     ]
+
+
+@pytest.mark.parametrize("order", ["<u2", ">u2"])
+@pytest.mark.parametrize("kind", ["shaded", "columns"])
+@pytest.mark.parametrize("shape", [(96, 128), (128, 128), (120, 200)])
+def test_the_rows_of_headerless_frames_are_found(tmp_path, order, kind, shape):
+    rng = np.random.default_rng(13)
+    y, x = np.mgrid[-1 : 1 : shape[0] * 1j, -1 : 1 : shape[1] * 1j]
+    flat = (
+        8000 * (1 - 0.2 * (x**2 + y**2)) if kind == "shaded" else 800 + rng.normal(0, 9, shape[1])
+    )
+    for name, image in (("bias", 0 * x + 500), ("flat", flat)):
+        noisy = rng.normal(0, 6, shape) + image
+        (tmp_path / f"{name}_1.raw").write_bytes(noisy.astype(order).tobytes())
+    raw = drafted(tmp_path)[1].frames.raw
+    assert (raw.rows, raw.columns) == shape
+    assert raw.byte_order == ("little" if order == "<u2" else "big")
+
+
+def test_nothing_is_guessed_from_headerless_noise(tmp_path):
+    noise = np.random.default_rng(14).normal(500, 5, (64, 64))
+    (tmp_path / "bias.raw").write_bytes(noise.astype("<u2").tobytes())
+    with pytest.raises(RequestError, match=r"bias\.raw: is headerless"):
+        drafted_recipe(tmp_path, stages=())
