@@ -12,7 +12,15 @@ from recipe.test_load import RECIPE
 from recipe.vocabulary_for_tests import VOCABULARY
 from sensorgrade.errors import RecipeError
 from sensorgrade.frames.geometry import fits_section
-from sensorgrade.recipe.document import DEEPEST, LONGEST, Mapping, Problems, Scalar, document
+from sensorgrade.recipe.document import (
+    DEEPEST,
+    LONGEST,
+    MOST_PROBLEMS,
+    Mapping,
+    Problems,
+    Scalar,
+    document,
+)
 from sensorgrade.recipe.load import parse_recipe
 from sensorgrade.recipe.model import Section
 from sensorgrade.recipe.quantities import USUAL, WrongQuantity, quantity
@@ -96,6 +104,7 @@ def test_twenty_thousand_damaged_recipes_are_judged(data):
     assert judged(flipped(data, RECIPE))
 
 
+HEAD = "name: a\nsensor: {technology: ccd, pixel_pitch: 9 um}\nstages: {read_noise: }\n"
 HUGE = {
     "one comment": "#" * (LONGEST - 1),
     "one word": "a" * LONGEST,
@@ -109,6 +118,16 @@ HUGE = {
     "lines": "\n" * LONGEST,
     "documents": "---\n" * (LONGEST // 4),
     "commas": "[" + "," * (LONGEST - 2) + "]",
+    "limits on one thing": HEAD + "grades: {a: {read_noise: [" + "<= 5 electron," * 60_000 + "]}}",
+    "unknown limits": HEAD + "grades: {a: {" + ",".join(f"reed_noize{n}" for n in range(45_000)),
+    "unknown limits with values": HEAD
+    + "grades: {a: {"
+    + ",".join(f"reed_noize{n}: <= 5 DN" for n in range(20_000))
+    + "}}",
+    "grades": HEAD
+    + "grades: {"
+    + ",".join(f"g{n}: {{read_noise: <= {n} electron}}" for n in range(12_000))
+    + "}",
     "escapes": '"' + "\\x41" * (LONGEST // 4 - 1) + '"',
 }
 
@@ -175,3 +194,9 @@ def test_the_tree_keeps_the_line_of_every_key_and_value():
 def test_the_deepest_recipe_there_can_be_is_read():
     text = "a: " + "{b: " * (DEEPEST - 1) + "1" + "}" * (DEEPEST - 1)
     assert isinstance(document(text, Problems("r.yaml")), Mapping)
+
+
+def test_nobody_is_told_of_more_mistakes_than_one_can_read():
+    with pytest.raises(RecipeError) as caught:
+        parse_recipe("\n".join(f"k{n}: 1" for n in range(5000)), VOCABULARY, path="r.yaml")
+    assert len(caught.value.problems) == MOST_PROBLEMS

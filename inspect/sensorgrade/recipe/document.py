@@ -16,6 +16,7 @@ from sensorgrade.errors import RecipeError
 
 LONGEST = 1 << 20  # characters of one recipe
 DEEPEST = 12  # levels of nesting; a recipe with everything in it has 6
+MOST_PROBLEMS = 200  # told of one document
 LONGEST_SENTENCE = 1000  # characters of one message
 MOST_NODES = 50_000  # keys and values of one document
 
@@ -76,9 +77,17 @@ class Problems:
         return len(self._found)
 
     def add(self, line: int, where: str, sentence: str) -> None:
-        """Note a mistake at ``line`` in the key ``where`` (dotted, empty for the document)."""
+        """Note a mistake at ``line`` in the key ``where`` (dotted, empty for the document).
+
+        Raises
+        ------
+        RecipeError
+            There are `MOST_PROBLEMS`: nobody reads more at once.
+        """
         whole = f"{where}: {sentence}" if where else sentence
         self._found.append((line, printable(whole, LONGEST_SENTENCE)))
+        if len(self._found) >= MOST_PROBLEMS:
+            raise self.error()
 
     def error(self) -> RecipeError:
         """All mistakes, in the order of lines."""

@@ -274,44 +274,41 @@ def stated(limit: Limit) -> str:
 
 def _contradictions(limits: tuple[Limit, ...], where: str, problems: Problems) -> None:
     """Note limits of one grade that repeat each other or leave no value."""
-    for index, later in enumerate(limits):
-        for earlier in limits[:index]:
-            if _place(earlier) != _place(later):
-                continue
-            if earlier.relation == later.relation:
-                problems.add(
-                    later.line,
-                    joined(where, later.name),
-                    f"a second limit on the same thing, first in line {earlier.line}; keep one",
-                )
-            else:
-                low, high = sorted((earlier, later), key=lambda limit: limit.relation, reverse=True)
-                if low.bound > high.bound or (low.bound == high.bound and low.line != high.line):
-                    problems.add(
-                        later.line,
-                        joined(where, later.name),
-                        f"{stated(later)} contradicts {stated(earlier)} of line {earlier.line};"
-                        " no value meets both",
-                    )
+    seen: dict[tuple[object, ...], Limit] = {}
+    for later in limits:
+        place = _place(later)
+        below = joined(where, later.name)
+        earlier = seen.setdefault((*place, later.relation), later)
+        if earlier is not later:
+            sentence = f"a second limit on the same thing, first in line {earlier.line}; keep one"
+            problems.add(later.line, below, sentence)
+        other = seen.get((*place, "<=" if later.relation == ">=" else ">="))
+        if other is None:
+            continue
+        low, high = (later, other) if later.relation == ">=" else (other, later)
+        if low.bound > high.bound or (low.bound == high.bound and low.line != high.line):
+            problems.add(
+                later.line,
+                below,
+                f"{stated(later)} contradicts {stated(other)} of line {other.line};"
+                " no value meets both",
+            )
 
 
 def _order(grades: list[Grade], problems: Problems) -> None:
     """Note limits that are tighter than a better grade's."""
-    for index, worse in enumerate(grades):
-        for limit in worse.limits:
-            for better in grades[:index]:
-                above = [
-                    other
-                    for other in better.limits
-                    if _place(other) == _place(limit) and other.relation == limit.relation
-                ]
-                sign = 1 if limit.relation == "<=" else -1
-                tighter = [other for other in above if sign * (limit.bound - other.bound) < 0]
-                if tighter:
-                    problems.add(
-                        limit.line,
-                        f"grades.{worse.name}.{limit.name}",
-                        f"{stated(limit)} is tighter than {stated(tighter[0])} of the better grade"
-                        f" {better.name} (line {tighter[0].line}); grades stand best first",
-                    )
-                    break
+    loosest: dict[tuple[object, ...], tuple[str, Limit]] = {}
+    for grade in grades:
+        for limit in grade.limits:
+            key = (*_place(limit), limit.relation)
+            name, better = loosest.get(key, (grade.name, limit))
+            sign = 1 if limit.relation == "<=" else -1
+            if sign * (limit.bound - better.bound) < 0 and name != grade.name:
+                problems.add(
+                    limit.line,
+                    f"grades.{grade.name}.{limit.name}",
+                    f"{stated(limit)} is tighter than {stated(better)} of the better grade"
+                    f" {name} (line {better.line}); grades stand best first",
+                )
+            else:
+                loosest[key] = (grade.name, limit)
