@@ -35,6 +35,7 @@ DEVICE = ExpectedDevice(
     lamp_noise=0.5,
     hot_threshold=2.0,
     hot_scale=1.0,
+    flat_signal=50.0,
 )
 TAKEN = FrameSet(bias=10, darks=6, dark_exposure=60.0, pairs=2, levels=8, flats=8)
 

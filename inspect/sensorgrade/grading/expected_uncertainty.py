@@ -12,6 +12,8 @@ from math import hypot, inf, pi, sqrt
 
 import numpy as np
 
+from sensorgrade.options import number, quantity
+
 ROUNDING_VARIANCE = 1.0 / 12.0  # DN², whole-DN steps
 FIT_RANGE = 0.7  # of saturation: the brightest flats that photon transfer uses
 LEVELS_FOR_CURVATURE = 5  # from here on the transfer is fitted with a quadratic term
@@ -37,25 +39,33 @@ class FrameSet:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class ExpectedDevice:
-    """What the device is expected to be like; one output.
+    """What the device and the bench are expected to be like; one output."""
 
-    ``offset_scatter`` is the standard deviation of the level from frame to frame, ``lamp_noise``
-    that of the light. ``hot_threshold`` is the dark current past which a pixel is hot,
-    ``hot_scale`` the excess over which the number of pixels falls by e there.
-    """
-
-    pixels: int
-    conversion_gain: float  # electron / DN
-    read_noise: float  # electron
-    offset_scatter: float  # electron
-    saturation: float  # electron
-    dark_current: float  # electron / s
-    dsnu: float  # electron
-    prnu: float  # %
-    lamp_noise: float  # %
-    hot_threshold: float  # electron / s
-    hot_scale: float  # electron / s
-    flat_signal: float = 0.5  # of saturation
+    pixels: int = number("Pixels of one output", default=1_000_000, minimum=2)
+    conversion_gain: float = quantity("electron/DN", "Conversion gain", default=2.0, minimum=1e-6)
+    read_noise: float = quantity("electron", "Read noise", default=5.0, minimum=1e-3)
+    offset_scatter: float = quantity(
+        "electron", "How the mean level scatters from frame to frame", default=0.2, minimum=0.0
+    )
+    saturation: float = quantity("electron", "Charge at saturation", default=50_000.0, minimum=1.0)
+    dark_current: float = quantity("electron/s", "Mean dark current", default=1.0, minimum=0.0)
+    dsnu: float = quantity("electron", "Dark non-uniformity of a dark", default=3.0, minimum=0.0)
+    prnu: float = quantity("%", "Non-uniformity of the response", default=1.0, minimum=0.0)
+    lamp_noise: float = quantity(
+        "%", "How the light scatters from frame to frame", default=0.3, minimum=0.0
+    )
+    hot_threshold: float = quantity(
+        "electron/s", "Dark current past which a pixel is hot", default=5.0, minimum=0.0
+    )
+    hot_scale: float = quantity(
+        "electron/s",
+        "Dark current over which the number of hot pixels falls by a factor e, at the threshold",
+        default=2.0,
+        minimum=1e-6,
+    )
+    flat_signal: float = quantity(
+        "%", "Signal of the flats for the master, of saturation", default=50.0, minimum=1.0
+    )
 
 
 def conversion_gain_uncertainty(device: ExpectedDevice, taken: FrameSet) -> float:
@@ -122,7 +132,7 @@ def prnu_uncertainty(device: ExpectedDevice, taken: FrameSet) -> float:
     """[%]. Spatial variance of the mean flat over its signal; the gain drops out."""
     if taken.flats < 2:
         return inf
-    signal = device.flat_signal * device.saturation
+    signal = device.flat_signal / 100.0 * device.saturation
     temporal = device.read_noise**2 + signal
     spatial = (device.prnu / 100.0 * signal) ** 2
     return 100.0 * _spatial(spatial, temporal, taken.flats, device.pixels) / signal
