@@ -99,8 +99,8 @@ def _print_costs(examined: "WhatIf", accept: int | None) -> None:
     for cost in examined.costs:
         if cost.missed:
             click.echo(
-                f"  {wording(cost.limit.name)} {allowed(cost.limit)}: missed by {cost.missed}, by"
-                f" {cost.alone} as their only miss, {cost.undecidable} without a value"
+                f"  {wording(cost.limit.name)} {allowed(cost.limit)}: not met by {cost.missed},"
+                f" by {cost.alone} as the only limit, {cost.undecidable} of them without a value"
             )
     if accept is None:
         return

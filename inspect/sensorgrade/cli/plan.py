@@ -126,7 +126,7 @@ def _print_device(device: "ExpectedDevice") -> None:
     click.echo("Expected of an output; state others with --expect:")
     for field in fields(device):
         declared = field.metadata["declared"]
-        value = f"{getattr(device, field.name):.4g} {declared.unit or ''}".rstrip()
+        value = f"{getattr(device, field.name):.6g} {declared.unit or ''}".rstrip()
         click.echo(f"  {field.name:16} {value:20} {declared.help}")
 
 

@@ -17,11 +17,12 @@ from sensorgrade.measurement import Finding, Measurement
 class StoredLot:
     """The inspected devices in order of serial, with grade and decision as they were.
 
-    ``recipe`` and ``recipe_text`` are those of the last run; ``failed`` are the serials of
-    devices that could not be inspected.
+    ``folders`` are the devices' own, where their files lie. ``recipe`` and ``recipe_text`` are
+    those of the last run; ``failed`` are the serials of devices that could not be inspected.
     """
 
     devices: tuple[DeviceReadings, ...]
+    folders: tuple[Path, ...]
     grades: tuple[str | None, ...]
     decisions: tuple[str, ...]
     recipe: str
@@ -52,8 +53,8 @@ def stored_lot(folder: Path, *, names: Iterable[str] | None = None) -> StoredLot
         if run is None:
             raise RequestError(f"{folder}: the ledger holds no run yet; inspect devices first")
         rows = connection.execute(
-            "SELECT device, serial, grade, decision FROM devices WHERE outcome = 'inspected'"
-            " ORDER BY serial, device"
+            "SELECT device, serial, folder, grade, decision FROM devices"
+            " WHERE outcome = 'inspected' ORDER BY serial, device"
         ).fetchall()
         failed = connection.execute(
             "SELECT serial FROM devices WHERE outcome = 'failed' ORDER BY serial"
@@ -71,10 +72,11 @@ def stored_lot(folder: Path, *, names: Iterable[str] | None = None) -> StoredLot
                 tuple(counts.get(device, ())),
                 tuple(findings.get(device, ())),
             )
-            for device, serial, _, _ in rows
+            for device, serial, _, _, _ in rows
         ),
-        grades=tuple(grade for _, _, grade, _ in rows),
-        decisions=tuple(decision for _, _, _, decision in rows),
+        folders=tuple(folder / name for _, _, name, _, _ in rows),
+        grades=tuple(grade for _, _, _, grade, _ in rows),
+        decisions=tuple(decision for _, _, _, _, decision in rows),
         recipe=run[0],
         recipe_text=run[1],
         failed=tuple(serial for (serial,) in failed),
