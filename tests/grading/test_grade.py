@@ -227,3 +227,15 @@ def test_a_finding_about_one_output_leaves_the_others_decided():
         "Read noise of output left: cannot be decided, needs two bias frames"
         " (read_noise, output left); a allows at most 5 electron.",
     )
+
+
+def test_sentences_of_met_limits_can_be_left_out():
+    readings = [measured("read_noise", 6.0, 0.1)], [counted("hot_pixels", 3)], []
+    asked = recipe(SCIENCE, ENGINEERING)
+    whole, short = (
+        grade(*readings, recipe=asked),
+        grade(*readings, recipe=asked, explain_accepted=False),
+    )
+    assert whole.reasons == short.reasons != ()
+    assert all(one.reason for one in whole.limits)
+    assert [bool(one.reason) for one in short.limits] == [True, False, False, False]

@@ -21,6 +21,7 @@ def grade(
     findings: Sequence[Finding],
     *,
     recipe: Recipe,
+    explain_accepted: bool = True,
 ) -> Graded:
     """The best grade all of whose limits are met, every limit's outcome, and the reasons.
 
@@ -35,6 +36,9 @@ def grade(
         All that the stages and the audit said of the device.
     recipe : Recipe
         Its grades, best first, its decision rule, outputs and temperature tolerance.
+    explain_accepted : bool
+        Whether limits that are met get their sentence too; writing them is half of the work, which
+        counts when a whole lot is graded again and only what is missed is told.
 
     Returns
     -------
@@ -52,7 +56,9 @@ def grade(
     open_question = False
     for level in recipe.grades:
         of_grade = [
-            result for limit in level.limits for result in _results(level, limit, of_device, recipe)
+            result
+            for limit in level.limits
+            for result in _results(level, limit, of_device, recipe, explain_accepted)
         ]
         results += of_grade
         outcomes = {result.outcome for result in of_grade}
@@ -63,19 +69,23 @@ def grade(
     return Graded(met, decision, _reasons(results, met, recipe.grades), tuple(results))
 
 
-def _results(level: Grade, limit: Limit, of_device: Known, recipe: Recipe) -> list[LimitResult]:
+def _results(
+    level: Grade, limit: Limit, of_device: Known, recipe: Recipe, explain_accepted: bool
+) -> list[LimitResult]:
     """The outcome of one limit, for every place it holds for."""
     results = []
     for place in held(limit, of_device, recipe=recipe):
         if place.why is None and place.reading is not None:
-            results.append(_decided(level, limit, place.reading, recipe))
+            results.append(_decided(level, limit, place.reading, recipe, explain_accepted))
         else:
             why = place.why or "not measured"
             results.append(_undecided(level, limit, place.scope, why, place.reading))
     return results
 
 
-def _decided(level: Grade, limit: Limit, reading: Reading, recipe: Recipe) -> LimitResult:
+def _decided(
+    level: Grade, limit: Limit, reading: Reading, recipe: Recipe, explain_accepted: bool
+) -> LimitResult:
     """The outcome of one limit for one reading."""
     rule = limit.rule or recipe.decision.kind
     confidence = recipe.decision.confidence
@@ -100,6 +110,18 @@ def _decided(level: Grade, limit: Limit, reading: Reading, recipe: Recipe) -> Li
             guard=guard_factor(confidence) * doubt,
             rule=rule,
         )
+    reason = ""
+    if explain_accepted or ruled != "accept":
+        reason = sentence.standing(
+            reading,
+            limit,
+            grade=level.name,
+            outcome=ruled,
+            margin=margin,
+            probability=probability,
+            rule=rule,
+            confidence=confidence,
+        )
     return LimitResult(
         grade=level.name,
         limit=limit,
@@ -110,16 +132,7 @@ def _decided(level: Grade, limit: Limit, reading: Reading, recipe: Recipe) -> Li
         margin_in_uncertainties=margin / doubt if doubt > 0.0 else None,
         probability=probability,
         outcome=ruled,
-        reason=sentence.standing(
-            reading,
-            limit,
-            grade=level.name,
-            outcome=ruled,
-            margin=margin,
-            probability=probability,
-            rule=rule,
-            confidence=confidence,
-        ),
+        reason=reason,
     )
 
 

@@ -1,7 +1,7 @@
 """One limit beside the readings that must meet it, and what stands in the way of deciding."""
 
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 from sensorgrade.defects.defect import DefectCount
 from sensorgrade.grading.selection import Reading, absent, by_name, combined, readings
@@ -31,10 +31,15 @@ class Held:
 
 @dataclass(frozen=True, slots=True)
 class Known:
-    """One device's readings by name, and the findings by the name whose limits they undecide."""
+    """One device's readings by name, and the findings by the name whose limits they undecide.
+
+    ``places`` remembers where limits were held before: grades differ in their bounds far more
+    often than in what these are held against.
+    """
 
     named: Mapping[str, list[Reading]]
     barred: Mapping[str, list[Finding]]
+    places: dict[tuple[object, ...], list[Held]] = field(default_factory=dict)
 
 
 def known(
@@ -50,6 +55,20 @@ def known(
 
 def held(limit: Limit, of_device: Known, *, recipe: Recipe) -> list[Held]:
     """The places that ``limit`` holds for on one device; there is at least one."""
+    asked = (
+        limit.name,
+        limit.relation,
+        limit.of,
+        limit.scope,
+        limit.zone,
+        limit.temperature,
+    )
+    if asked not in of_device.places:
+        of_device.places[asked] = _held(limit, of_device, recipe=recipe)
+    return of_device.places[asked]
+
+
+def _held(limit: Limit, of_device: Known, *, recipe: Recipe) -> list[Held]:
     findings = of_device.barred.get(limit.name, ())
     found = readings(limit, of_device.named)
     if not found:

@@ -75,7 +75,13 @@ def regrade(folder: Path, *, limits: Path, vocabulary: Vocabulary) -> Regraded:
     names = {limit.name for level in recipe.grades for limit in level.limits}
     stored = stored_lot(folder, names=names | {TEMPERATURE, ENERGY})
     graded = tuple(
-        grade(device.measurements, device.counts, device.findings, recipe=recipe)
+        grade(
+            device.measurements,
+            device.counts,
+            device.findings,
+            recipe=recipe,
+            explain_accepted=False,
+        )
         for device in stored.devices
     )
     serials = [device.serial for device in stored.devices]
