@@ -140,3 +140,16 @@ def test_sets_that_cannot_measure_have_no_uncertainty_to_offer():
     ):
         assert formula(DEVICE, bare) == inf
     assert hot_pixels_uncertainty(DEVICE, bare, expected=10.0) == inf
+
+
+def test_spatial_deviation_below_the_noise_of_two_frames():
+    rng = np.random.default_rng(8)
+    few = replace(DEVICE, pixels=10_000, read_noise=10.0, dark_current=0.0, dsnu=3.0)
+    found = []
+    for _ in range(400):
+        taken = rng.normal(0.0, 3.0, 10_000) + rng.normal(0.0, 10.0, (2, 10_000))
+        within = taken.var(axis=0, ddof=1).mean() / 2
+        found.append(np.sqrt(taken.mean(axis=0).var(ddof=1) - within))
+    gain = 3.0 * conversion_gain_uncertainty(few, TAKEN) / 2.0
+    expected = np.sqrt(dsnu_uncertainty(few, replace(TAKEN, darks=2)) ** 2 - gain**2)
+    assert expected == pytest.approx(np.std(found), rel=0.18)

@@ -239,3 +239,10 @@ def test_sentences_of_met_limits_can_be_left_out():
     assert whole.reasons == short.reasons != ()
     assert all(one.reason for one in whole.limits)
     assert [bool(one.reason) for one in short.limits] == [True, False, False, False]
+
+
+def test_a_finding_about_one_output_leaves_the_whole_devices_count_undecided():
+    finding = Finding("warning", "hot, output left", "needs darks", "", ("hot_pixels",))
+    asked = recipe(("a", [limit("hot_pixels", "<=", 100, "")]), outputs=("left", "right"))
+    found = grade([], [counted("hot_pixels", 3)], [finding], recipe=asked)
+    assert found.decision == "undecided"

@@ -92,3 +92,16 @@ def test_identical_readings_have_no_scatter():
 def test_share_of_a_one_sided_tolerance():
     assert share_of_tolerance(0.1, mean=4.0, upper=5.0) == pytest.approx(30.0)
     assert share_of_tolerance(0.1, lower=3.0, upper=5.0) == pytest.approx(30.0)
+
+
+def test_an_interaction_worked_by_hand():
+    # Cells ±1, repeats ±0.5 about them: MS of error 8 x 0.25 / 4, of interaction 2 x 4 / 1.
+    readings = {
+        "p": {"a": [1.5, 0.5], "b": [-0.5, -1.5]},
+        "q": {"a": [-0.5, -1.5], "b": [1.5, 0.5]},
+    }
+    found = repeatability(readings)
+    assert not found.pooled
+    assert found.repeatability**2 == pytest.approx(0.5)
+    assert found.reproducibility**2 == pytest.approx((8.0 - 0.5) / 2)
+    assert found.devices == 0.0
