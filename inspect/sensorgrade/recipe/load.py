@@ -12,6 +12,7 @@ from sensorgrade.recipe.declared import alternatives, nearest, options, value
 from sensorgrade.recipe.document import LONGEST, Mapping, Problems, Scalar, document, joined, shown
 from sensorgrade.recipe.limits import Context, context, grades
 from sensorgrade.recipe.model import DecisionRule, FrameRules, Grade, LotPlan, Recipe, Sensor, Zone
+from sensorgrade.recipe.pattern import endless
 from sensorgrade.recipe.vocabulary import Vocabulary
 
 Options = TypeVar("Options")
@@ -299,6 +300,8 @@ def _frame_rules(frames: FrameRules, root: Mapping, problems: Problems) -> None:
         except (re.error, OverflowError, RecursionError) as error:
             problems.add(entry.line, "frames.pattern", f"not a regular expression: {error}")
         else:
+            if (reason := endless(frames.pattern)) is not None:
+                problems.add(entry.line, "frames.pattern", reason)
             if not groups:
                 problems.add(
                     entry.line,
