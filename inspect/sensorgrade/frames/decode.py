@@ -125,7 +125,7 @@ def _bands(plane: Plane) -> Iterator[NDArray[Any]]:
     if coding.packing in ("plain", "gzip"):
         stored = _stored_bands(path, plane, coding)
     else:
-        stored = iter((unpacked_image(path, plane.shape, coding),))
+        stored = iter((unpacked_image(path, plane.shape, coding, offset=plane.offset),))
     for band in stored:
         if coding.blank is not None and (blanks := int(np.count_nonzero(band == coding.blank))):
             raise FrameError(

@@ -1,5 +1,9 @@
-"""NumPy files: the header only, and never a pickle."""
+"""NumPy files: the header only, and never a pickle.
 
+The header is matched and not evaluated (NumPy format versions 1.0 and 2.0, numpy.lib.format).
+"""
+
+import re
 from pathlib import Path
 
 import numpy as np
@@ -15,7 +19,14 @@ from sensorgrade.frames.contents import (
 from sensorgrade.frames.frame import Coding, Plane
 from sensorgrade.frames.native import native_type
 
-MAX_HEADER = 10_000  # bytes, numpy's own bound for files that are not trusted
+MAGIC = b"\x93NUMPY"
+LENGTH_BYTES = {b"\x01\x00": 2, b"\x02\x00": 4}  # by version
+LONGEST_HEADER = 10_000  # bytes
+HEADER = re.compile(
+    r"\{'descr': (?P<type>[^:]*), 'fortran_order': (?P<by_columns>True|False),"
+    r" 'shape': \((?P<shape>[0-9, ]*)\), ?\}\s*"
+)
+TYPE = re.compile(r"'([<>|=]?[uif][1248])'")
 
 
 def read_npy(path: Path, layout: Layout) -> FileContents:
@@ -27,23 +38,32 @@ def read_npy(path: Path, layout: Layout) -> FileContents:
         Not a .npy file of a two-dimensional numeric array, or truncated.
     """
     with path.open("rb") as file:
-        try:
-            version = np.lib.format.read_magic(file)
-            read = {
-                (1, 0): np.lib.format.read_array_header_1_0,
-                (2, 0): np.lib.format.read_array_header_2_0,
-            }[version]
-            shape, by_columns, dtype = read(file, max_header_size=MAX_HEADER)
-        except (ValueError, KeyError) as error:
-            raise FrameError(f"{path}: is not a NumPy array file that can be read") from error
+        start = file.read(8)
+        width = LENGTH_BYTES.get(start[6:]) if start[:6] == MAGIC else None
+        length = int.from_bytes(file.read(width), "little") if width is not None else 0
+        header = file.read(min(length, LONGEST_HEADER)).decode("latin-1")
         offset = file.tell()
-    if dtype.kind not in "uif" or dtype.itemsize > 8:
-        raise FrameError(f"{path}: holds {dtype} values; a frame has plain numbers")
-    if len(shape) != 2:
-        raise FrameError(f"{path}: its array has shape {shape}; a frame has rows and columns")
-    rows, columns = checked_shape(path, *shape)
+    found = HEADER.fullmatch(header)
+    if found is None or len(header) != length:
+        raise FrameError(f"{path}: is not a NumPy array file that can be read")
+    plain = TYPE.fullmatch(found["type"])
+    try:
+        dtype = np.dtype(plain[1]) if plain else None
+    except TypeError:  # such as a float of one byte
+        dtype = None
+    if dtype is None:
+        name = found["type"].strip("'|")
+        raise FrameError(
+            f"{path}: holds {'object' if name == 'O' else name} values; a frame has plain numbers"
+        )
+    axes = [axis.strip() for axis in found["shape"].split(",") if axis.strip()]
+    if len(axes) != 2 or not all(axis.isdigit() and len(axis) < 12 for axis in axes):
+        raise FrameError(
+            f"{path}: its array has shape ({found['shape']}); a frame has rows and columns"
+        )
+    rows, columns = checked_shape(path, int(axes[0]), int(axes[1]))
     check_length(path, needed=offset + rows * columns * dtype.itemsize, found=path.stat().st_size)
-    if by_columns and rows > 1 and columns > 1:
+    if found["by_columns"] == "True" and rows > 1 and columns > 1:
         coding = Coding("columns first", dtype.str)
         plane = Plane((rows, columns), native_type(dtype), path=path, offset=offset, coding=coding)
     else:

@@ -42,9 +42,12 @@ def read_tiff(path: Path, layout: Layout) -> FileContents:
             page = tiff.pages.first
             several = _has_second_page(tiff)
             values = _values(page)
-            dtype, samples = page.dtype, page.samplesperpixel
-            rows, columns, depth = page.imagelength, page.imagewidth, page.imagedepth
-            offsets, lengths = page.dataoffsets, page.databytecounts
+            # A damaged tag can hold several numbers where one belongs, which int() refuses.
+            dtype, samples = page.dtype, int(page.samplesperpixel)
+            rows, columns = int(page.imagelength), int(page.imagewidth)
+            depth = int(page.imagedepth)
+            offsets, lengths = map(int, page.dataoffsets), map(int, page.databytecounts)
+            spans = list(zip(offsets, lengths, strict=False))
             contiguous = page.is_contiguous and page.compression == 1 and page.fillorder == 1
             whole = page.bitspersample in (8, 16, 32, 64)
             order = tiff.byteorder
@@ -58,12 +61,13 @@ def read_tiff(path: Path, layout: Layout) -> FileContents:
             " number"
         )
     shape = checked_shape(path, rows, columns)
-    needed = max((start + count for start, count in zip(offsets, lengths, strict=False)), default=0)
+    needed = max((start + count for start, count in spans), default=0)
     check_length(path, needed=needed, found=size)
     stored = np.dtype(dtype).newbyteorder(order)
-    if contiguous and whole:
-        check_length(path, needed=offsets[0] + rows * columns * stored.itemsize, found=size)
-        plane = stored_plane(path, shape, stored=stored.str, offset=offsets[0])
+    if contiguous and whole and spans:
+        first = spans[0][0]
+        check_length(path, needed=first + rows * columns * stored.itemsize, found=size)
+        plane = stored_plane(path, shape, stored=stored.str, offset=first)
     else:
         check_expansion(path, decoded=rows * columns * stored.itemsize, stored=size)
         coding = Coding("tiff", stored.str)
