@@ -1,5 +1,7 @@
 """The guides say what is true: every block in them is run, validated or found in the package."""
 
+import importlib
+import pkgutil
 import re
 import shlex
 from types import SimpleNamespace
@@ -10,11 +12,14 @@ from astropy.io import fits
 from astropy.nddata import CCDData, StdDevUncertainty
 from click.testing import CliRunner
 
+import sensorgrade.defects
+import sensorgrade.measure
 from recipe.vocabulary_for_tests import VOCABULARY
 from sensorgrade.cli.main import command
 from sensorgrade.defects.bits import BITS
 from sensorgrade.errors import NotMeasured, RequestError
 from sensorgrade.guides.topics import FOLDER, TOPICS, guide_text, guide_titles
+from sensorgrade.measure.stage import Stage
 from sensorgrade.recipe.load import parse_recipe
 from sensorgrade.recipe.vocabulary import Vocabulary
 
@@ -145,3 +150,22 @@ def test_the_masks_of_the_guide_can_be_used(tmp_path, monkeypatch):
     assert namespace["for_short_exposures"].sum() == 1
     # Two of the three bad pixels lie inside the aperture, each takes 1 from the sum.
     assert namespace["table"]["aperture_sum"][0] == pytest.approx(np.pi * 25 - 2)
+
+
+def measured():
+    """Every quantity that the stages in the package measure."""
+    for package in (sensorgrade.measure, sensorgrade.defects):
+        for module in pkgutil.iter_modules(package.__path__):
+            stage = getattr(
+                importlib.import_module(f"{package.__name__}.{module.name}"), "STAGE", None
+            )
+            if isinstance(stage, Stage):
+                yield from stage.measures
+
+
+def test_every_measurement_is_explained():
+    headings = re.findall(r"^### (.+)$", guide_text("measurements"), re.MULTILINE)
+    explained = {name for heading in headings for name in heading.split(", ")}
+    found = {quantity.name for quantity in measured()}
+    assert "conversion_gain" in found
+    assert found <= explained, sorted(found - explained)

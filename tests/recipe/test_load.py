@@ -231,3 +231,16 @@ def test_any_options_class_can_be_read_from_a_file_of_its_own(tmp_path):
 def test_a_quantity_per_electron_is_written_with_a_slash():
     assert example("1 / electron") == "10 / electron"
     assert quantity("-3e-6 / electron", "1 / electron") == -3e-6
+
+
+@pytest.mark.parametrize(
+    "written, scope",
+    [("550", "550 nm"), ("550 nm", "550 nm"), ("0.55 um", "550 nm"), ("Blue", "Blue")],
+)
+def test_a_wavelength_is_named_as_results_name_it(written, scope):
+    text = f"""\
+name: a
+sensor: {{technology: ccd, pixel_pitch: 9 um}}
+grades: {{good: {{prnu: {{limit: <= 1 %, wavelength: {written}}}}}}}
+"""
+    assert parse_recipe(text, VOCABULARY, path="").grades[0].limits[0].scope == scope

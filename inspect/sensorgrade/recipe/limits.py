@@ -24,6 +24,7 @@ BOUND = re.compile(rf"\s*(<=|>=|≤|≥)\s*({NUMBER}(?:\s*[^\s.].*)?)", re.DOTAL
 RANGE = re.compile(
     rf"\s*({NUMBER})(?<!\.)\s*([^\s.][^.]*?)?\s*\.\.\s*({NUMBER})\s*(.*?)\s*", re.DOTALL
 )
+NUMBER_ALONE = re.compile(NUMBER)
 RELATIONS = {"<=": "<=", "≤": "<=", ">=": ">=", "≥": ">="}
 CELL_COLOURS = ("red", "green", "green-red", "green-blue", "blue")
 
@@ -258,8 +259,17 @@ def _scope(long: LimitOptions, context: Context) -> str | None:
     if long.colour is not None:
         parts.append(f"colour {long.colour}")
     if long.wavelength is not None:
-        parts.append(long.wavelength)
+        parts.append(_wavelength(long.wavelength))
     return ", ".join(parts) or None
+
+
+def _wavelength(text: str) -> str:
+    """As results name it: ``"550 nm"`` for a number or a length, else the filter's own name."""
+    try:
+        length = f"{text} nm" if NUMBER_ALONE.fullmatch(text) else text
+        return f"{read_quantity(length, 'nm'):g} nm"
+    except WrongQuantity:
+        return text
 
 
 def _place(limit: Limit) -> tuple[object, ...]:
