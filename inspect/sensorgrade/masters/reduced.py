@@ -103,13 +103,15 @@ class FrameLevels:
 
     ``mean`` (L, R) float64 [DN], frames by regions, overscan-corrected; ``overscan`` (L, R) mean
     overscan level [DN] or NaN without one; ``histogram`` (65536,) int64 counts of raw codes
-    over the sampled rows, None for samples that are not 16-bit integers.
+    over the sampled rows, None for samples that are not 16-bit integers. ``rows`` holds, for bias
+    stacks, the sampled rows of each region, (L, S, N) float32 [raw DN]; it is empty for others.
     """
 
     stack: Stack
     mean: NDArray[np.float64]
     overscan: NDArray[np.float64]
     histogram: NDArray[np.int64] | None
+    rows: tuple[NDArray[np.float32], ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
