@@ -103,7 +103,10 @@ def _master(image: StackImage | None) -> Master | None:
 
 def _levels(stack: Stack, frames: np.ndarray, layout: Geometry) -> FrameLevels:
     mean = np.array([[f[r.rows, r.columns].mean() for r in layout.regions] for f in frames])
-    return FrameLevels(stack, mean, np.full_like(mean, np.nan), None)
+    rows: tuple[np.ndarray, ...] = ()
+    if stack.kind == "bias":
+        rows = tuple(np.asarray(frames, np.float32)[:, r.rows, r.columns] for r in layout.regions)
+    return FrameLevels(stack, mean, np.full_like(mean, np.nan), None, rows)
 
 
 def _pair_tiles(
