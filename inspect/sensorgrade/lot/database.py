@@ -59,13 +59,15 @@ def open_for_reading(folder: Path) -> sqlite3.Connection:
     path = folder / NAME
     if not path.is_file():
         raise RequestError(f"{folder}: no {NAME} here; give the folder that a run wrote to")
-    address = f"{path.resolve().as_uri()}?mode=ro"
+    address = path.resolve().as_uri()
     try:
-        connection = _probed(address)
+        # A connection that may not write leaves the files behind that WAL needs beside the ledger;
+        # this one could and takes them away, but is told not to change anything.
+        connection = _probed(f"{address}?mode=rw")
     except sqlite3.OperationalError:
-        # WAL needs a file beside the ledger even to read; on a read-only medium nobody writes.
+        # Where the folder is read-only those files cannot be made, and nobody else writes.
         try:
-            connection = _probed(address + "&immutable=1")
+            connection = _probed(f"{address}?mode=ro&immutable=1")
         except sqlite3.Error as error:
             raise RequestError(f"{path}: cannot be read as a ledger ({error})") from error
     except sqlite3.DatabaseError as error:
@@ -87,6 +89,7 @@ def _probed(address: str) -> sqlite3.Connection:
     """A connection that has read something, so that trouble shows at once."""
     connection = sqlite3.connect(address, uri=True, timeout=BUSY, isolation_level=None)
     try:
+        connection.execute("PRAGMA query_only = ON")
         connection.execute("SELECT count(*) FROM sqlite_master").fetchone()
     except sqlite3.Error:
         connection.close()

@@ -157,3 +157,11 @@ CREATE TABLE files (
     name   TEXT NOT NULL,
     PRIMARY KEY (device, place)
 ) WITHOUT ROWID;
+
+-- Files on their way into a device's folder, or out of it: what a run that was killed just then
+-- may have left there. Empty otherwise.
+CREATE TABLE moving (
+    folder TEXT NOT NULL,
+    name   TEXT NOT NULL,
+    PRIMARY KEY (folder, name)
+) WITHOUT ROWID;

@@ -1,0 +1,83 @@
+"""Where devices are worked on, and how finished files come into their own folder."""
+
+import os
+import shutil
+import tempfile
+import time
+from collections.abc import Iterable, Iterator
+from contextlib import contextmanager, suppress
+from pathlib import Path
+
+from sensorgrade.errors import DeviceError
+
+PREFIX = ".inspecting-"  # no device's folder starts with a dot
+TRIES = 20  # to remove a folder into which a dying worker still writes
+
+
+@contextmanager
+def workplace(folder: Path) -> Iterator[Path]:
+    """A folder inside ``folder`` for work in progress, gone afterwards.
+
+    What killed runs left behind is removed first. A worker that outlived its run finds its
+    place gone and can spoil nothing.
+    """
+    remove_strays(folder)
+    place = Path(tempfile.mkdtemp(prefix=PREFIX, dir=folder)).resolve()
+    try:
+        yield place
+    finally:
+        _remove(place)
+
+
+def remove_strays(folder: Path) -> None:
+    """Remove the work in progress of runs that were killed; the caller holds the lock."""
+    for stray in folder.glob(f"{PREFIX}*"):
+        _remove(stray)
+
+
+def settle(made: Path, folder: Path, *, stale: Iterable[str]) -> None:
+    """Move every file in ``made`` into the device's ``folder`` and remove the ``stale`` ones.
+
+    Each file appears whole under its name or not at all; other files there are left alone.
+
+    Raises
+    ------
+    DeviceError
+        ``folder`` is a link or no folder, so that the files would land somewhere else.
+    """
+    if folder.is_symlink() or (folder.exists() and not folder.is_dir()):
+        raise DeviceError(
+            f"{folder}: is a link or a file where the device's folder should be; move it away"
+        )
+    folder.mkdir(exist_ok=True)
+    for path in sorted(made.iterdir()):
+        path.replace(folder / path.name)
+    for name in stale:
+        (folder / name).unlink(missing_ok=True)
+    _flush(folder)
+    _flush(folder.parent)
+
+
+def clear(folder: Path, *, stale: Iterable[str]) -> None:
+    """Remove the ``stale`` files from a device's folder, and the folder if nothing is left."""
+    for name in stale:
+        (folder / name).unlink(missing_ok=True)
+    with suppress(OSError):  # other files are there, or it never was
+        folder.rmdir()
+
+
+def _flush(folder: Path) -> None:
+    """Have the folder's names on the disk before the ledger speaks of them."""
+    handle = os.open(folder, os.O_RDONLY)
+    try:
+        os.fsync(handle)
+    finally:
+        os.close(handle)
+
+
+def _remove(folder: Path) -> None:
+    for _ in range(TRIES):
+        shutil.rmtree(folder, ignore_errors=True)
+        if not folder.exists():
+            return
+        time.sleep(0.1)
