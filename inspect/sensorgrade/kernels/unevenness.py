@@ -1,7 +1,13 @@
-"""Sums over an image less a smooth surface: rows, columns, blocks, and the scatter that is left."""
+"""Sums over an image less a smooth surface: rows, columns, blocks, and the scatter that is left.
+
+Each row is taken in short loops over few arrays, which the compiler vectorises; only the pixels
+past the limit are looked at one by one.
+"""
 
 import numpy as np
 from numba import njit
+
+RUN = 64  # rows that a single-precision sum of columns may run over
 
 
 @njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
@@ -11,8 +17,7 @@ def surface_row(coefficients, row_basis, column_basis, row, surface):  # type: i
     coefficients : (T, T) float64; row_basis : (T, M), column_basis : (T, N) float32
     """
     terms = coefficients.shape[0]
-    for x in range(surface.shape[0]):
-        surface[x] = 0.0
+    surface[:] = np.float32(0.0)
     for b in range(terms):
         factor = 0.0
         for a in range(terms):
@@ -24,6 +29,76 @@ def surface_row(coefficients, row_basis, column_basis, row, surface):  # type: i
 
 
 @njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+def departures(image, base, surface, relative, value):  # type: ignore[no-untyped-def]
+    """``image - base - surface``, over the surface when ``relative``, into ``value`` (N,)."""
+    if relative:
+        for x in range(value.shape[0]):
+            value[x] = (image[x] - base[x] - surface[x]) / surface[x]
+    else:
+        for x in range(value.shape[0]):
+            value[x] = image[x] - base[x] - surface[x]
+
+
+@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+def less_lines(value, offset, column_offset):  # type: ignore[no-untyped-def]
+    """Subtract the row's offset and the columns' from ``value``."""
+    for x in range(value.shape[0]):
+        value[x] -= offset + column_offset[x]
+
+
+@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+def temporal_row(variance, count, other_variance, other_count, out):  # type: ignore[no-untyped-def]
+    """Temporal variance of the difference of two means, into ``out``; a count of 0 is as 1."""
+    for x in range(out.shape[0]):
+        first = variance[x] / np.float32(max(count[x], np.uint16(1)))
+        out[x] = first + other_variance[x] / np.float32(max(other_count[x], np.uint16(1)))
+
+
+@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+def over_squares(out, surface):  # type: ignore[no-untyped-def]
+    """Divide ``out`` by the square of ``surface``."""
+    for x in range(out.shape[0]):
+        out[x] /= surface[x] * surface[x]
+
+
+@njit(nogil=True, cache=True)
+def outside(value, limit):  # type: ignore[no-untyped-def]
+    """How many lie past ``limit`` (what is not a number does)."""
+    found = 0
+    for x in range(value.shape[0]):
+        found += not abs(value[x]) <= limit
+    return found
+
+
+@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+def total(value, start, stop):  # type: ignore[no-untyped-def]
+    """Sum of a run."""
+    found = np.float32(0.0)
+    for x in range(start, stop):
+        found += value[x]
+    return found
+
+
+@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+def powers(value):  # type: ignore[no-untyped-def]
+    """Sums of squares and of fourth powers."""
+    second = np.float32(0.0)
+    fourth = np.float32(0.0)
+    for x in range(value.shape[0]):
+        square = value[x] * value[x]
+        second += square
+        fourth += square * square
+    return second, fourth
+
+
+@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+def add_to(sums, value):  # type: ignore[no-untyped-def]
+    """Add ``value`` to ``sums``."""
+    for x in range(value.shape[0]):
+        sums[x] += value[x]
+
+
+@njit(nogil=True, cache=True)
 def line_sums(
     image,
     base,
@@ -42,50 +117,43 @@ def line_sums(
 ):  # type: ignore[no-untyped-def]
     """Sums of the departures from a surface that are not past ``limit``.
 
-    image, base : (M, N) float32; the departure is image - base - surface, over the surface when
-        ``relative``
+    image : (M, N) float32; base : likewise, or (0, 0) for none; the departure is
+        image - base - surface, over the surface when ``relative``
     row_sum, row_count (M,); column_sum, column_count (N,); block_sum, block_count (By, Bx), blocks
         of ``block`` x ``block`` pixels : float64, zero on entry, written
     """
     rows, columns = image.shape
     surface = np.empty(columns, np.float32)
     value = np.empty(columns, np.float32)
-    kept = np.empty(columns, np.float32)
-    column_part = np.zeros(columns, np.float32)
-    column_kept = np.zeros(columns, np.float32)
+    run = np.zeros(columns, np.float32)
+    nothing = np.zeros(columns, np.float32)
     limit = np.float32(limit)
-    zero = np.float32(0.0)
-    one = np.float32(1.0)
     for y in range(rows):
         surface_row(coefficients, row_basis, column_basis, y, surface)
-        for x in range(columns):
-            departure = image[y, x] - base[y, x] - surface[x]
-            if relative:
-                departure /= surface[x]
-            inside = abs(departure) <= limit
-            value[x] = departure if inside else zero
-            kept[x] = one if inside else zero
-            column_part[x] += value[x]
-            column_kept[x] += kept[x]
-        for index in range(block_sum.shape[1]):
-            found = zero
-            count = zero
-            for x in range(index * block, min(columns, (index + 1) * block)):
-                found += value[x]
-                count += kept[x]
-            block_sum[y // block, index] += found
-            block_count[y // block, index] += count
-            row_sum[y] += found
-            row_count[y] += count
-        if y % 64 == 63 or y == rows - 1:  # single precision holds a short run of rows only
+        departures(image[y], base[y] if base.size > 0 else nothing, surface, relative, value)
+        if outside(value, limit) > 0:
             for x in range(columns):
-                column_sum[x] += column_part[x]
-                column_count[x] += column_kept[x]
-                column_part[x] = zero
-                column_kept[x] = zero
+                if not abs(value[x]) <= limit:
+                    value[x] = 0.0
+                    row_count[y] -= 1
+                    column_count[x] -= 1
+                    block_count[y // block, x // block] -= 1
+        add_to(run, value)
+        row_count[y] += columns
+        for index in range(block_sum.shape[1]):
+            stop = min(columns, (index + 1) * block)
+            found = total(value, index * block, stop)
+            block_sum[y // block, index] += found
+            block_count[y // block, index] += stop - index * block
+            row_sum[y] += found
+        if y % RUN == RUN - 1 or y == rows - 1:
+            for x in range(columns):
+                column_sum[x] += run[x]
+            run[:] = 0.0
+    column_count += rows
 
 
-@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+@njit(nogil=True, cache=True)
 def scatter_sums(
     image,
     base,
@@ -112,38 +180,36 @@ def scatter_sums(
     """
     rows, columns = image.shape
     surface = np.empty(columns, np.float32)
-    limit2 = np.float32(limit * limit)
-    zero = np.float32(0.0)
-    one = np.float32(1.0)
-    sums = np.zeros(7)
+    value = np.empty(columns, np.float32)
+    noise = np.empty(columns, np.float32)
+    nothing = np.zeros(columns, np.float32)
+    one = np.ones(columns, np.uint16)
+    limit = np.float32(limit)
+    kept = np.zeros(4)
+    everything = np.zeros(3)
     for y in range(rows):
         surface_row(coefficients, row_basis, column_basis, y, surface)
-        offset = row_offset[y]
-        n = zero
-        s2 = zero
-        s4 = zero
-        t = zero
-        a2 = zero
-        a4 = zero
-        at = zero
-        for x in range(columns):
-            departure = image[y, x] - base[y, x] - surface[x]
-            temporal = image_variance[y, x] / np.float32(max(image_count[y, x], 1))
-            temporal += base_variance[y, x] / np.float32(max(base_count[y, x], 1))
-            if relative:
-                inverse = one / surface[x]
-                departure *= inverse
-                temporal *= inverse * inverse
-            departure -= offset + column_offset[x]
-            squared = departure * departure
-            a2 += squared
-            a4 += squared * squared
-            at += temporal
-            inside = one if squared <= limit2 else zero
-            n += inside
-            s2 += inside * squared
-            s4 += inside * squared * squared
-            t += inside * temporal
-        for index, part in enumerate((n, s2, s4, t, a2, a4, at)):
-            sums[index] += part
-    return sums
+        departures(image[y], base[y] if base.size > 0 else nothing, surface, relative, value)
+        less_lines(value, row_offset[y], column_offset)
+        if base.size > 0:
+            temporal_row(image_variance[y], image_count[y], base_variance[y], base_count[y], noise)
+        else:
+            temporal_row(image_variance[y], image_count[y], nothing, one, noise)
+        if relative:
+            over_squares(noise, surface)
+        second, fourth = powers(value)
+        everything[0] += second
+        everything[1] += fourth
+        everything[2] += total(noise, 0, columns)
+        if outside(value, limit) > 0:
+            for x in range(columns):
+                if not abs(value[x]) <= limit:
+                    value[x] = 0.0
+                    noise[x] = 0.0
+                    kept[0] -= 1
+            second, fourth = powers(value)
+        kept[0] += columns
+        kept[1] += second
+        kept[2] += fourth
+        kept[3] += total(noise, 0, columns)
+    return np.concatenate((kept, everything))

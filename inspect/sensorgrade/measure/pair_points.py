@@ -94,7 +94,10 @@ def pair_points(pairs: PairTiles, bias: NDArray[np.float64]) -> PairPoints:
         ratio = np.ones_like(a)
     else:
         total = np.where(usable, pairs.count, 0.0)
-        whole = (a * total).sum(axis=(1, 2)) / (b * total).sum(axis=(1, 2))
+        light_a, light_b = (a * total).sum(axis=(1, 2)), (b * total).sum(axis=(1, 2))
+        # An output that is dead or dark has no light to take a ratio of.
+        lit = (light_a > 0) & (light_b > 0)
+        whole = np.where(lit, light_a, 1.0) / np.where(lit, light_b, 1.0)
         ratio = np.broadcast_to(whole[:, None, None], a.shape).copy()
         with np.errstate(divide="ignore", invalid="ignore"):
             error = np.sqrt(2 * pairs.var_b / pairs.count) / b
@@ -117,7 +120,13 @@ def pair_points(pairs: PairTiles, bias: NDArray[np.float64]) -> PairPoints:
 
 
 def points_of(inputs: Inputs, region: Region, *, kind: str) -> tuple[PairPoints, ...]:
-    """Points of every stack of that kind ("bias" or "flat") in the region, dimmest first."""
+    """Points of every stack of that kind ("bias" or "flat") in the region, dimmest first.
+
+    Raises
+    ------
+    NotMeasured
+        Flats were asked for, and the bias level is unknown or none of them shows light.
+    """
     found = [
         pairs
         for pairs in inputs.reduced.pairs
@@ -127,4 +136,6 @@ def points_of(inputs: Inputs, region: Region, *, kind: str) -> tuple[PairPoints,
         return ()
     bias = tile_bias(inputs, region) if kind == "flat" else np.zeros((1, 1))
     points = [pair_points(pairs, bias) for pairs in found]
+    if kind == "flat" and max(float(p.signal.max(initial=0.0)) for p in points) <= 0:
+        raise NotMeasured("no flat shows light above the bias level here")
     return tuple(sorted(points, key=lambda p: float(p.signal.mean()) if p.signal.size else 0.0))

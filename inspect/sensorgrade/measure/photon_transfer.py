@@ -18,7 +18,7 @@ from sensorgrade.measure.variance_curve import (
     variance_curve,
     variance_peak,
 )
-from sensorgrade.measure.variance_fit import VarianceFit, variance_fit
+from sensorgrade.measure.variance_fit import VarianceFit, joined, variance_fit
 from sensorgrade.measurement import Finding, Measurement
 from sensorgrade.options import choice, quantity
 
@@ -173,7 +173,7 @@ def region_transfer(
     if biases:
         zero = np.concatenate([p.variance for p in biases])
         zero_degrees = np.concatenate([p.degrees for p in biases])
-        joined = _widened(
+        anchor = _widened(
             variance_fit(
                 np.concatenate([np.zeros_like(zero), signal]),
                 np.concatenate([zero, variance]),
@@ -182,7 +182,7 @@ def region_transfer(
             )
         )
         if alone is None or _agree(alone, zero, zero_degrees):
-            fit, anchored = joined, True
+            fit, anchored = anchor, True
         else:
             findings.append(_disagreement(region, alone, zero, zero_degrees))
     assert fit is not None  # levels + bias was checked above
@@ -235,11 +235,12 @@ def _below(
 
 def _levels(flats: tuple[PairPoints, ...], upper: float) -> int:
     """Number of distinct light levels used: mean signals of pairs that differ by a tenth."""
+    sums = [(np.bincount(p.pair, p.signal), np.bincount(p.pair)) for p in flats]
     means = sorted(
-        float(p.signal[p.pair == pair].mean())
-        for p in flats
-        for pair in np.unique(p.pair)
-        if p.signal[p.pair == pair].mean() <= upper
+        float(total / count)
+        for totals, counts in sums
+        for total, count in zip(totals, counts, strict=True)
+        if count and total / count <= upper
     )
     if not means:
         return 1
@@ -339,19 +340,21 @@ def _neighbours(
     """Slopes of neighbour covariance with the square of the signal, for both directions."""
     found = []
     signal = np.concatenate([p.signal for p in flats])
-    degrees = np.concatenate([p.degrees for p in flats])
-    for name, covariance in (
+    steady = np.isfinite(np.concatenate([p.right for p in flats])) & (signal <= upper)
+    signal = signal[steady]
+    if len(signal) < 3 or np.ptp(signal) < 0.1 * upper:
+        return []
+    degrees = np.concatenate([p.degrees for p in flats])[steady]
+    for name, both in (
         ("right", np.concatenate([p.right for p in flats])),
         ("down", np.concatenate([p.down for p in flats])),
     ):
-        good = np.isfinite(covariance) & (signal <= upper)
-        if good.sum() < 3 or np.ptp(signal[good]) < 0.1 * upper:
-            continue
+        level, covariance, weights = joined(signal, both[steady], degrees)
         # The covariance of independent samples of variance V scatters by V² over their number.
-        weight = degrees[good] / fit.at(signal[good]) ** 2
-        basis = np.stack([np.ones(good.sum()), signal[good] ** 2])
+        weight = weights / fit.at(level) ** 2
+        basis = np.stack([np.ones(len(level)), level**2])
         normal = (basis * weight) @ basis.T
-        _, slope = np.linalg.solve(normal, (basis * weight) @ covariance[good])
+        _, slope = np.linalg.solve(normal, (basis * weight) @ covariance)
         error = sqrt(np.linalg.inv(normal)[1, 1])
         found.append(
             Measurement(
@@ -360,7 +363,7 @@ def _neighbours(
                 float(slope),
                 error,
                 "1 / electron",
-                int(good.sum()) - 2,
+                len(signal) - 2,
             )
         )
     return found

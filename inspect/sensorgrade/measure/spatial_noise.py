@@ -13,7 +13,7 @@ from sensorgrade.masters.reduced import StackImage
 DEGREE = 6  # of the polynomial surface that is taken as shading
 BLOCK = 32  # largest side of the blocks whose means the surface is fitted to
 REJECT = 5.0  # pixels farther off, in deviations of their own scatter, are defects
-SAMPLES = 1 << 19  # pixels from which the first surface and the rejection limits are taken
+SAMPLES = 1 << 17  # pixels from which the first surface and the rejection limits are taken
 MAD_TO_SD = 1.4826022
 
 
@@ -83,8 +83,8 @@ def spatial_noise(
     variance = np.ascontiguousarray(image.variance[cut])
     count = np.ascontiguousarray(image.count[cut])
     if base is None:
-        base_values = base_variance = np.zeros_like(values)
-        base_count = np.ones_like(count)
+        base_values = base_variance = np.empty((0, 0), np.float32)
+        base_count = np.empty((0, 0), np.uint16)
     else:
         base_values = np.ascontiguousarray(base.mean[cut])
         base_variance = np.ascontiguousarray(base.variance[cut])
@@ -206,7 +206,10 @@ def _sampled(
 ) -> tuple[NDArray[np.float64], int]:
     """Every k-th pixel of every k-th row of ``image - base``, and k."""
     step = max(1, round(sqrt(image.size / SAMPLES)))
-    return image[::step, ::step].astype(np.float64) - base[::step, ::step], step
+    sample = image[::step, ::step].astype(np.float64)
+    if base.size:
+        sample -= base[::step, ::step]
+    return sample, step
 
 
 def _first_surface(
