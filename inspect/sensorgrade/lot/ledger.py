@@ -15,7 +15,7 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
 from types import TracebackType
-from typing import Literal, Self
+from typing import Any, Literal, Self
 
 from sensorgrade import __version__
 from sensorgrade.lot.database import open_for_reading, open_for_writing
@@ -279,9 +279,9 @@ class Ledger:
             *(found[key] for key in ("accept", "reject", "undecided", "ungraded", "failed"))
         )
 
-    def seconds(self) -> dict[str, float]:
-        """Time that each device took [s], by serial."""
-        return dict(self._connection.execute("SELECT serial, seconds FROM devices"))
+    def select(self, question: str) -> Iterator[tuple[Any, ...]]:
+        """The rows that answer a question in SQL; the tables are described in schema/."""
+        return iter(self._connection.execute(question))
 
 
 @contextmanager

@@ -8,9 +8,9 @@ from collections.abc import Iterable, Iterator
 from contextlib import contextmanager, suppress
 from pathlib import Path
 
+from sensorgrade.atomic import UNFINISHED
 from sensorgrade.errors import DeviceError
 
-PREFIX = ".inspecting-"  # no device's folder starts with a dot
 TRIES = 20  # to remove a folder into which a dying worker still writes
 
 
@@ -22,7 +22,7 @@ def workplace(folder: Path) -> Iterator[Path]:
     place gone and can spoil nothing.
     """
     remove_strays(folder)
-    place = Path(tempfile.mkdtemp(prefix=PREFIX, dir=folder)).resolve()
+    place = Path(tempfile.mkdtemp(prefix=UNFINISHED, dir=folder)).resolve()
     try:
         yield place
     finally:
@@ -31,7 +31,7 @@ def workplace(folder: Path) -> Iterator[Path]:
 
 def remove_strays(folder: Path) -> None:
     """Remove the work in progress of runs that were killed; the caller holds the lock."""
-    for stray in folder.glob(f"{PREFIX}*"):
+    for stray in folder.glob(f"{UNFINISHED}*"):
         _remove(stray)
 
 
@@ -75,9 +75,13 @@ def _flush(folder: Path) -> None:
         os.close(handle)
 
 
-def _remove(folder: Path) -> None:
+def _remove(stray: Path) -> None:
+    """Remove a file or a folder, also one into which something is still being written."""
+    if not stray.is_dir() or stray.is_symlink():
+        stray.unlink(missing_ok=True)
+        return
     for _ in range(TRIES):
-        shutil.rmtree(folder, ignore_errors=True)
-        if not folder.exists():
+        shutil.rmtree(stray, ignore_errors=True)
+        if not stray.exists():
             return
         time.sleep(0.1)
