@@ -66,24 +66,6 @@ def test_read_noise_departs_as_stated(transferred):
     assert_standard(scores(transferred, "read_noise", 8.0))
 
 
-def test_gain_and_read_noise_reach_the_cramer_rao_bound(transferred):
-    # Fisher information of variances: N(L - 1) / 2V² at zero, N / 2V² at each pair.
-    light = np.linspace(1000, 40000, 8) / 2
-    variance = 16 + 1 / 12 + light / 2
-    size = 64 * 64
-    signals = np.concatenate([[0.0], light])
-    weights = size / (2 * np.concatenate([[16 + 1 / 12], variance]) ** 2)
-    weights[0] *= 3  # four bias frames have three degrees of freedom
-    basis = np.stack([np.ones(9), signals])
-    bound = np.linalg.inv((basis * weights) @ basis.T)
-    gain = np.array([one["conversion_gain"].value for one in transferred])
-    assert gain.std(ddof=1) < 1.15 * 4 * np.sqrt(bound[1, 1])
-    # Read noise in electrons is sqrt(R - 1/12) / K.
-    gradient = np.array([1 / (2 * 4 * 0.5), -4 / 0.25])
-    noise = np.array([one["read_noise"].value for one in transferred])
-    assert noise.std(ddof=1) < 1.15 * np.sqrt(gradient @ bound @ gradient)
-
-
 @pytest.fixture(scope="module")
 def darkened() -> tuple[list[dict[str, Measurement]], NDArray[np.float64]]:
     """4 biases, 6 darks of 10 s and of 40 s; 12 electron/s, offsets that move 0.3 DN a frame.

@@ -6,10 +6,16 @@ from scipy.optimize import minimize
 from scipy.stats import norm
 
 from measure.plain_reduction import knowing, plain_inputs, stack_of
+from measure.simulated import exposures
 from sensorgrade.errors import NotMeasured
 from sensorgrade.masters.reduced import PairTiles
 from sensorgrade.measure.pair_points import pair_points, points_of
-from sensorgrade.measure.photon_transfer import RESOLVABLE_VARIANCE, ROUNDING_VARIANCE
+from sensorgrade.measure.photon_transfer import (
+    RESOLVABLE_VARIANCE,
+    ROUNDING_VARIANCE,
+    PhotonTransferOptions,
+    photon_transfer,
+)
 from sensorgrade.measure.read_noise import ReadNoiseOptions, read_noise
 from sensorgrade.measure.saturation import least_signal
 from sensorgrade.measure.spatial_noise import MAD_TO_SD
@@ -240,3 +246,40 @@ def test_read_noise_uncertainty_of_one_pair(outside):
         found=100 * found.standard_uncertainty / found.value,
         rtol=0.02,
     )
+
+
+def test_spread_against_the_cramer_rao_bound(outside):
+    # Two biases and eight flat pairs of 64 x 64 pixels, 2 electron/DN, 8 electron, 300 devices.
+    shape, light = (64, 64), np.linspace(1000, 40000, 8)
+    gains, noises = [], []
+    for seed in range(300):
+        rng = np.random.default_rng([14, seed])
+        response = 1 + 0.01 * rng.standard_normal(shape)
+        frames = [(stack_of("bias", 2), exposures(rng, np.zeros(shape), frames=2))]
+        frames += [
+            (stack_of("flat", 2, level=x), exposures(rng, x * response, frames=2)) for x in light
+        ]
+        inputs = plain_inputs(frames)
+        transfer = photon_transfer(inputs, PhotonTransferOptions(model="linear"))
+        inputs = knowing(inputs, *transfer.measurements)
+        gains.append(transfer.measurements[0].value)
+        noises.append(read_noise(inputs, ReadNoiseOptions()).measurements[0].value)
+    # Fisher information of Gaussian samples of variance V about an unknown mean: N / 2V² a pair.
+    signal = np.concatenate([[0.0], light / 2])
+    variance = 16 + 1 / 12 + signal / 2
+    weight = 64 * 64 / (2 * variance**2)
+    basis = np.stack([np.ones(9), signal])
+    bound = np.linalg.inv((basis * weight) @ basis.T)
+    gradient = np.array([1 / (2 * 4 * 0.5), -4 / 0.25])  # of sqrt(R - 1/12) / K
+    for what, found, least in (
+        ("gain", gains, 4 * np.sqrt(bound[1, 1])),
+        ("read noise", noises, np.sqrt(gradient @ bound @ gradient)),
+    ):
+        outside(
+            f"spread of {what} over 300 devices, over the Cramér-Rao bound of its pairs",
+            source="Fisher information of Gaussian samples, linear model",
+            standing="derived",
+            expected=1.0,
+            found=np.std(found, ddof=1) / least,
+            atol=0.15,
+        )
