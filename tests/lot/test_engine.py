@@ -9,7 +9,7 @@ import pytest
 from lot.fakes import RECIPE, fake_device, fake_devices, tree, well
 from sensorgrade.frames.frame import DeviceFrames
 from sensorgrade.lot.engine import LotOptions, LotOutcome, run_folder, run_lot
-from sensorgrade.lot.ledger import read_ledger
+from sensorgrade.lot.ledger import Ledger, read_ledger
 from sensorgrade.lot.progress import Progress
 from sensorgrade.lot.result_json import read_result
 from sensorgrade.recipe.model import Recipe
@@ -223,6 +223,49 @@ def test_a_full_disk_stops_the_run_and_blames_no_device(tmp_path):
     assert outcome.failed == 0 and outcome.inspected == 1
     assert "no space is left" in (outcome.stopped or "")
     assert failures(tmp_path / "out") == {}
+
+
+class Crash(BaseException):
+    """The program ends here and now, as far as it can be acted in one process."""
+
+
+@pytest.mark.parametrize(
+    ("target", "method", "call"),
+    [
+        (Ledger, "open_folder", 1),
+        (Path, "replace", 1),
+        (Path, "replace", 2),
+        (Path, "replace", 3),
+        (Ledger, "record", 1),
+        (Ledger, "end", 1),
+    ],
+)
+@pytest.mark.parametrize("behaviours", [("more", "well"), ("well", "well")])
+def test_an_end_in_the_middle_of_keeping_a_device_is_made_good_by_the_next_run(
+    tmp_path, monkeypatch, target, method, call, behaviours
+):
+    devices = fake_devices(tmp_path / "in", "more", "well")
+    run(tmp_path / "out", devices)  # something older is there already
+    for device, behaviour in zip(devices, behaviours, strict=True):
+        device.frames[1].path.write_text(f"{behaviour} than before")
+    run(tmp_path / "expected", devices)
+    done, calls = getattr(target, method), []
+
+    def crash(*arguments, **named):
+        calls.append(method)
+        if len(calls) == call:
+            raise Crash
+        return done(*arguments, **named)
+
+    with monkeypatch.context() as patch:
+        patch.setattr(target, method, crash)
+        with pytest.raises(Crash):
+            run(tmp_path / "out", devices)
+    run(tmp_path / "out", devices)
+    assert tree(tmp_path / "out") == tree(tmp_path / "expected")
+    with read_ledger(tmp_path / "out") as ledger:
+        assert list(ledger.select("SELECT * FROM moving")) == []
+        assert len(ledger.results()) == 2
 
 
 def test_progress_counts_every_device(tmp_path):

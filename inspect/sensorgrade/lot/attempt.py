@@ -12,6 +12,7 @@ import traceback
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass, field, replace
+from functools import cache
 from pathlib import Path
 from typing import Protocol
 
@@ -20,6 +21,7 @@ from sensorgrade.frames.frame import DeviceFrames
 from sensorgrade.lot.result import DeviceResult
 
 FULL = (errno.ENOSPC, errno.EDQUOT)
+PARENT_CHECK = 0.5  # s between two looks at whether the parent still lives
 TIMED_OUT = "Timeout ("  # how faulthandler begins
 
 
@@ -66,13 +68,10 @@ class StageClock:
 
     note: Path
     tell: Callable[[str], None] | None
-    parent: int | None
     began: list[tuple[str, float]] = field(default_factory=list)
 
     def __call__(self, name: str) -> None:
         """A stage begins."""
-        if self.parent is not None and os.getppid() != self.parent:
-            os._exit(1)  # the run was killed; nobody waits for this device
         self.began.append((name, time.monotonic()))
         with self.note.open("ab") as file:
             file.write(f"{name}\n".encode())
@@ -109,13 +108,14 @@ def attempt(
     hanging read or loop cannot be asked to stop; where it hung is then in the note. ``parent``
     is the process that waits for the answer, None when it is this one or on another machine.
     """
-    if parent is not None and threading.current_thread() is threading.main_thread():
+    if parent is not None:
         signal.signal(signal.SIGINT, signal.SIG_IGN)  # Ctrl-C is for the parent to answer
+        _end_with(parent)
     note = note_of(workplace, number)
     if note.exists() and (late := failure_in_note(note, time_limit)) is not None:
         return Attempt(number, time_limit or 0.0, failure=late)
     start = time.monotonic()
-    clock = StageClock(note, tell, parent)
+    clock = StageClock(note, tell)
     made: Path | None = None
     try:
         made = Path(tempfile.mkdtemp(prefix=f"{number}-", dir=workplace))
@@ -131,6 +131,18 @@ def attempt(
     end = time.monotonic()
     note.unlink(missing_ok=True)
     return replace(answer, seconds=end - start, stages=clock.stages(end))
+
+
+@cache
+def _end_with(parent: int) -> None:
+    """End this worker soon after the process that waits for it was killed."""
+
+    def watch() -> None:
+        while os.getppid() == parent:
+            time.sleep(PARENT_CHECK)
+        os._exit(1)
+
+    threading.Thread(target=watch, daemon=True).start()
 
 
 @contextmanager

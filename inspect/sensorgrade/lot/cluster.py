@@ -60,7 +60,7 @@ class Cluster:
             return futures
 
         try:
-            waiting = as_completed(submitted(2 * self.slots))
+            waiting = as_completed(submitted(2 * self.slots), loop=self.client.loop)
             for future in waiting:
                 number = numbers.pop(future)
                 error = future.exception()

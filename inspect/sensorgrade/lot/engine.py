@@ -144,7 +144,7 @@ def _answers(
     tell: Callable[[str | None], None],
 ) -> tuple[Capacity, Generator[Attempt, None, None]]:
     """An answer for each device: from the cluster, from worker processes, or from this one."""
-    if options.cluster is not None:
+    if options.cluster is not None and todo:
         cluster = ending.enter_context(connected(options.cluster, time_limit=options.time_limit))
         return Capacity(cluster.slots, 1), cluster.attempts(todo, inspect_one, place)
     room = capacity(list(todo.values()), jobs=options.jobs, memory=options.memory)
