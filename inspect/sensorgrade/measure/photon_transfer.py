@@ -150,12 +150,11 @@ def region_transfer(
         raise NotMeasured("needs two or more flats taken alike, which the set does not have")
     curve = variance_curve(flats)
     upper, reason = _upper(flats, curve, options.upper)
-    used = _below(flats, upper)
-    if used is None:
+    signal, variance, degrees, pair = _below(flats, upper)
+    if not len(signal):
         raise NotMeasured("every flat pair is saturated; take pairs at lower light")
-    signal, variance, degrees = used
     biases = points_of(inputs, region, kind="bias")
-    lower = 0.0
+    lower = float(signal.min())  # dim tiles weigh as little as they say, so none is cut off
     levels = _levels(flats, upper)
     order = 2 if options.model == "quadratic" else 1
     if options.model == "automatic" and levels >= LEVELS_FOR_CURVATURE:
@@ -167,7 +166,7 @@ def region_transfer(
         )
     alone = None
     if levels >= order + 1:
-        alone = _widened(variance_fit(signal, variance, degrees, order=order))
+        alone = _widened(variance_fit(signal, variance, degrees, order=order, group=pair))
     fit, anchored = alone, False
     findings: list[Finding] = []
     if biases:
@@ -179,6 +178,7 @@ def region_transfer(
                 np.concatenate([zero, variance]),
                 np.concatenate([zero_degrees, degrees]),
                 order=order,
+                group=np.concatenate([np.zeros(len(zero), np.int64), pair + 1]),
             )
         )
         if alone is None or _agree(alone, zero, zero_degrees):
@@ -221,15 +221,15 @@ def _upper(
 
 def _below(
     flats: tuple[PairPoints, ...], upper: float
-) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64]] | None:
-    """Signal, variance and degrees of the tiles that are not brighter than ``upper``."""
+) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64], NDArray[np.int64]]:
+    """Signal, variance, degrees and pair (numbered through) of tiles not above ``upper``."""
+    firsts = np.cumsum([0, *(int(p.pair.max(initial=-1)) + 1 for p in flats)])
     kept = [p.signal <= upper for p in flats]
-    if not any(k.any() for k in kept):
-        return None
     return (
         np.concatenate([p.signal[k] for p, k in zip(flats, kept, strict=True)]),
         np.concatenate([p.variance[k] for p, k in zip(flats, kept, strict=True)]),
         np.concatenate([p.degrees[k] for p, k in zip(flats, kept, strict=True)]),
+        np.concatenate([p.pair[k] + f for p, k, f in zip(flats, kept, firsts[:-1], strict=True)]),
     )
 
 
@@ -252,10 +252,19 @@ def _levels(flats: tuple[PairPoints, ...], upper: float) -> int:
 
 
 def _widened(fit: VarianceFit) -> VarianceFit:
-    """The fit with its covariance widened by a misfit that chance does not explain."""
-    if fit.degrees < 1 or chi2.sf(fit.chi_square, fit.degrees) > UNLIKELY:
-        return fit
-    return replace(fit, covariance=fit.covariance * (fit.chi_square / fit.degrees))
+    """The fit with its covariance widened by a misfit that chance does not explain.
+
+    Of tiles, and of the means of pairs: what moves a whole pair (light that changes during the
+    exposure, a response that bends) hardly shows in the scatter of its tiles.
+    """
+    factor = 1.0
+    for square, degrees in (
+        (fit.chi_square, fit.degrees),
+        (fit.group_chi_square, fit.group_degrees),
+    ):
+        if degrees > 0 and chi2.sf(square, degrees) < UNLIKELY:
+            factor = max(factor, square / degrees)
+    return replace(fit, covariance=fit.covariance * factor)
 
 
 def _zero(zero: NDArray[np.float64], degrees: NDArray[np.float64]) -> tuple[float, float]:

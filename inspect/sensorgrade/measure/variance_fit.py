@@ -15,7 +15,8 @@ class VarianceFit:
     """V(s) = c0 + c1 s (+ c2 s²), with covariance of the coefficients.
 
     ``kept`` is the number of points used, ``chi_square`` is over those, ``degrees`` their number
-    less that of coefficients.
+    less that of coefficients. ``group_chi_square`` and ``group_degrees`` are the same of the means
+    of groups (pairs of frames), which show errors that all tiles of a pair share.
     """
 
     coefficients: NDArray[np.float64]
@@ -23,6 +24,8 @@ class VarianceFit:
     kept: int
     chi_square: float
     degrees: int
+    group_chi_square: float
+    group_degrees: int
 
     def at(self, signal: NDArray[np.float64]) -> NDArray[np.float64]:
         """The model's variance [DN²] at ``signal`` [DN]."""
@@ -35,6 +38,7 @@ def variance_fit(
     degrees: NDArray[np.float64],
     *,
     order: int,
+    group: NDArray[np.int64] | None = None,
 ) -> VarianceFit:
     """Fit a polynomial of ``order`` 1 or 2 (0: a constant) to sample variances.
 
@@ -45,6 +49,9 @@ def variance_fit(
         Sample variances of Gaussian samples.
     degrees : ndarray of shape (n,)
         Their degrees of freedom.
+    order : int
+    group : ndarray of shape (n,), optional
+        Which pair of frames each point is from, counted from 0.
 
     Notes
     -----
@@ -61,14 +68,24 @@ def variance_fit(
     kept = np.abs(deviation) <= REJECT
     if not kept.all():
         signal, variance, degrees = signal[kept], variance[kept], degrees[kept]
-        deviation = deviation[kept]
+        deviation, model = deviation[kept], model[kept]
+        group = None if group is None else group[kept]
         fit = _fitted(*joined(signal, variance, degrees), order)
+    group_chi_square, group_degrees = 0.0, 0
+    if group is not None:
+        # The mean of a group in units of its standard error.
+        root = np.sqrt(degrees) / model
+        total = np.bincount(group, root**2)
+        mean = np.bincount(group, root * deviation)[total > 0] / np.sqrt(total[total > 0])
+        group_chi_square, group_degrees = float(mean @ mean), len(mean) - order - 1
     return VarianceFit(
         coefficients=fit[0],
         covariance=fit[1],
         kept=len(signal),
         chi_square=float(deviation @ deviation),
         degrees=len(signal) - order - 1,
+        group_chi_square=group_chi_square,
+        group_degrees=group_degrees,
     )
 
 
