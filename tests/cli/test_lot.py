@@ -79,3 +79,14 @@ def test_a_table_that_cannot_be_written_is_told(run, tmp_path, capsys):
         main(["lot", str(run), "--csv", str(tmp_path / "absent" / "t.csv")])
     assert stopped.value.code == 2
     assert "t.csv: cannot be written" in capsys.readouterr().err
+
+
+def test_wafer_maps_yields_and_clustering(run):
+    answer = CliRunner().invoke(command, [str(run), "--wafers", "--reticle", "1", "2"])
+    assert answer.exit_code == 1
+    assert "Wafer W00\n  column 1 to 2\n  row    0  A R\n" in answer.output
+    assert "  W00: 1 of 2, 50.0 %" in answer.output
+    assert "row 0, column 1: 0 of 1" in answer.output
+    assert "Neighbouring pairs of dies not accepted: 0" in answer.output
+    document = json.loads(CliRunner().invoke(command, [str(run), "--wafers", "--json"]).output)
+    assert document["places"]["clustering"]["pairs"] == 0

@@ -14,7 +14,8 @@ if TYPE_CHECKING:
 @click.command(
     epilog="\b\nExamples:\n"
     "  sensorgrade lot reports/lot7\n"
-    "  sensorgrade lot reports/lot7 --csv lot7.csv --parquet lot7.parquet\n\n"
+    "  sensorgrade lot reports/lot7 --csv lot7.csv --parquet lot7.parquet\n"
+    "  sensorgrade lot reports/lot7 --wafers --reticle 2 3\n\n"
     "Exit status: 0 every device accepted; 1 some rejected or undecided; 2 the request is wrong;"
     " 3 some device could not be inspected."
 )
@@ -23,6 +24,13 @@ if TYPE_CHECKING:
 @click.option("--ecsv", "ecsv_file", type=click.Path(path_type=Path), help="Write ECSV here.")
 @click.option(
     "--parquet", "parquet_file", type=click.Path(path_type=Path), help="Write Parquet here."
+)
+@click.option("--wafers", is_flag=True, help="Show wafer maps, yields by place and clustering.")
+@click.option(
+    "--reticle",
+    type=(click.IntRange(min=1), click.IntRange(min=1)),
+    metavar="ROWS COLUMNS",
+    help="Dies that the reticle prints at once; with --wafers.",
 )
 @click.option("--json", "as_json", is_flag=True, help="Print JSON instead of text.")
 @click.option("--quiet", is_flag=True, help="Print nothing; the exit status tells.")
@@ -33,6 +41,8 @@ def command(
     csv_file: Path | None,
     ecsv_file: Path | None,
     parquet_file: Path | None,
+    wafers: bool,
+    reticle: tuple[int, int] | None,
     as_json: bool,
     quiet: bool,
 ) -> None:
@@ -51,10 +61,20 @@ def command(
 
             results, failures = ledger.results(), ledger.failures()
             write_tables(results, failures, csv=csv_file, ecsv=ecsv_file, parquet=parquet_file)
+    places = None
+    if wafers or reticle:
+        from sensorgrade.lot.wafer import lot_places
+
+        places = lot_places(lines, reticle=reticle)
     if as_json:
-        click.echo(json.dumps(_document(lines, tally, runs), ensure_ascii=False, indent=1))
+        click.echo(json.dumps(_document(lines, tally, runs, places), ensure_ascii=False, indent=1))
     elif not quiet:
-        _print_lines(lines)
+        if places is None:
+            _print_lines(lines)
+        else:
+            from sensorgrade.cli.wafers import print_places
+
+            print_places(places)
         _print_tally(tally, runs)
     ctx.exit(tally.exit_status)
 
@@ -112,11 +132,14 @@ def _print_tally(tally: "Tally", runs: "list[Run]") -> None:
         )
 
 
-def _document(lines: "list[DeviceLine]", tally: "Tally", runs: "list[Run]") -> dict[str, object]:
+def _document(
+    lines: "list[DeviceLine]", tally: "Tally", runs: "list[Run]", places: "LotPlaces | None"
+) -> dict[str, object]:
     from dataclasses import asdict
 
     return {
         "devices": [asdict(line) for line in lines],
         "tally": asdict(tally),
         "runs": [asdict(run) for run in runs],
+        "places": None if places is None else asdict(places),
     }

@@ -104,7 +104,9 @@ class Processes:
             work = [joblib.delayed(run)(device, number) for number, device in devices.items()]
             answers = parallel(work)
         try:
-            yield from answers
+            # "yield from" would have them closed before `finally` is reached.
+            for answer in answers:  # noqa: UP028
+                yield answer
         finally:
             with warnings.catch_warnings():
                 warnings.simplefilter("ignore")  # that work was cut short is what was asked for
