@@ -9,6 +9,7 @@ import click
 if TYPE_CHECKING:
     from sensorgrade.lot.ledger import Run, Tally
     from sensorgrade.lot.summary import DeviceLine
+    from sensorgrade.lot.wafer import LotPlaces
 
 
 @click.command(
