@@ -134,3 +134,16 @@ def test_sigterm_and_a_second_run_on_the_same_folder(tmp_path, undisturbed):
         assert ledger.runs()[-1].ending == "stopped"
     assert sorted(path.name[:4] for path in (tmp_path / "out").iterdir())[-1] == "lot."
     checked_after_resume(source, tmp_path / "out", expected)
+
+
+@pytest.mark.parametrize("lines", [1, 3])
+def test_workers_do_not_outlive_a_run_that_was_killed(tmp_path, undisturbed, lines):
+    source, _, _ = undisturbed
+    run = started(source, tmp_path / "out")
+    assert run.stdout is not None
+    for _ in range(lines):
+        run.stdout.readline()
+    run.kill()
+    run.wait()
+    assert gone(run)
+    ended(run)

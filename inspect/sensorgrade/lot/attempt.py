@@ -2,17 +2,13 @@
 
 import errno
 import faulthandler
-import os
 import shutil
-import signal
 import tempfile
-import threading
 import time
 import traceback
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass, field, replace
-from functools import cache
 from pathlib import Path
 from typing import Protocol
 
@@ -21,7 +17,6 @@ from sensorgrade.frames.frame import DeviceFrames
 from sensorgrade.lot.result import DeviceResult
 
 FULL = (errno.ENOSPC, errno.EDQUOT)
-PARENT_CHECK = 0.5  # s between two looks at whether the parent still lives
 TIMED_OUT = "Timeout ("  # how faulthandler begins
 
 
@@ -99,18 +94,13 @@ def attempt(
     workplace: Path,
     threads: int,
     time_limit: float | None = None,
-    parent: int | None = None,
     tell: Callable[[str], None] | None = None,
 ) -> Attempt:
     """Inspect one device in a folder of its own; every error becomes part of the answer.
 
     With ``time_limit`` [s] the process is ended from outside Python when time is up, because a
-    hanging read or loop cannot be asked to stop; where it hung is then in the note. ``parent``
-    is the process that waits for the answer, None when it is this one or on another machine.
+    hanging read or loop cannot be asked to stop; where it hung is then in the note.
     """
-    if parent is not None:
-        signal.signal(signal.SIGINT, signal.SIG_IGN)  # Ctrl-C is for the parent to answer
-        _end_with(parent)
     note = note_of(workplace, number)
     if note.exists() and (late := failure_in_note(note, time_limit)) is not None:
         return Attempt(number, time_limit or 0.0, failure=late)
@@ -131,18 +121,6 @@ def attempt(
     end = time.monotonic()
     note.unlink(missing_ok=True)
     return replace(answer, seconds=end - start, stages=clock.stages(end))
-
-
-@cache
-def _end_with(parent: int) -> None:
-    """End this worker soon after the process that waits for it was killed."""
-
-    def watch() -> None:
-        while os.getppid() == parent:
-            time.sleep(PARENT_CHECK)
-        os._exit(1)
-
-    threading.Thread(target=watch, daemon=True).start()
 
 
 @contextmanager

@@ -2,6 +2,9 @@
 
 import os
 import re
+import signal
+import threading
+import time
 import warnings
 from collections.abc import Callable, Generator, Mapping
 from concurrent.futures.process import BrokenProcessPool
@@ -11,7 +14,6 @@ from functools import partial
 from pathlib import Path
 
 import joblib
-from joblib.externals.loky import get_reusable_executor
 
 from sensorgrade.frames.frame import DeviceFrames
 from sensorgrade.lot.attempt import (
@@ -22,6 +24,8 @@ from sensorgrade.lot.attempt import (
     last_stage,
     note_of,
 )
+
+PARENT_CHECK = 0.5  # s between two looks at whether the parent still lives
 
 
 @dataclass(frozen=True, slots=True)
@@ -47,22 +51,17 @@ class Processes:
             workplace=workplace,
             threads=self.threads,
             time_limit=self.time_limit,
-            parent=os.getpid(),
         )
         left = dict(devices)
-        try:
-            while left:
-                try:
-                    with closing(self._pool(run, left)) as answers:
-                        for answer in answers:
-                            del left[answer.number]
-                            yield answer
-                except BrokenProcessPool:
-                    for number in [one for one in left if note_of(workplace, one).exists()]:
-                        yield self._alone(run, number, left.pop(number), workplace)
-        finally:
-            if left:  # the run was stopped
-                end_processes()
+        while left:
+            try:
+                with closing(self._pool(run, left)) as answers:
+                    for answer in answers:
+                        del left[answer.number]
+                        yield answer
+            except BrokenProcessPool:
+                for number in [one for one in left if note_of(workplace, one).exists()]:
+                    yield self._alone(run, number, left.pop(number), workplace)
 
     def _alone(
         self, run: Callable[..., Attempt], number: int, device: DeviceFrames, workplace: Path
@@ -94,7 +93,13 @@ class Processes:
         """Answers from joblib's workers; raises BrokenProcessPool when one dies."""
         # With one worker joblib would work in this process, which a dying device must not kill.
         count = max(2, min(self.jobs, len(devices)))
-        with joblib.parallel_config("loky", n_jobs=count, inner_max_num_threads=self.threads):
+        with joblib.parallel_config(
+            "loky",
+            n_jobs=count,
+            inner_max_num_threads=self.threads,
+            initializer=_begin_worker,
+            initargs=(os.getpid(),),
+        ):
             parallel = joblib.Parallel(
                 return_as="generator_unordered",
                 batch_size=1,
@@ -113,6 +118,13 @@ class Processes:
                 answers.close()
 
 
-def end_processes() -> None:
-    """End joblib's workers at once, whatever they do."""
-    get_reusable_executor().shutdown(wait=True, kill_workers=True)
+def _begin_worker(parent: int) -> None:
+    """Leave Ctrl-C to the parent, and end soon after it was killed, whatever is at work then."""
+    signal.signal(signal.SIGINT, signal.SIG_IGN)
+
+    def watch() -> None:
+        while os.getppid() == parent:
+            time.sleep(PARENT_CHECK)
+        os._exit(1)
+
+    threading.Thread(target=watch, daemon=True).start()
