@@ -9,7 +9,7 @@ from pathlib import Path
 
 from sensorgrade.errors import DeviceError
 from sensorgrade.frames.frame import DeviceFrames
-from sensorgrade.lot.attempt import Attempt, InspectOne, attempt
+from sensorgrade.lot.attempt import FULL, Attempt, InspectOne, attempt
 from sensorgrade.lot.capacity import Capacity, capacity
 from sensorgrade.lot.cluster import connected
 from sensorgrade.lot.failure import Failure
@@ -130,6 +130,8 @@ def run_lot(
             stopped = "stopped on request"
         except sqlite3.OperationalError as error:
             stopped = f"{ledger.folder}: the ledger cannot be written ({error})"
+        except OSError as error:
+            stopped = f"{error.filename or ledger.folder}: {error.strerror}"
         with suppress(sqlite3.OperationalError):
             ledger.end("stopped" if stopped else "finished")
     return work.outcome(stopped)
@@ -194,6 +196,10 @@ class _Work:
                 settle(answer.made, self._ledger.folder / device.folder, stale=stale)
             except DeviceError as error:
                 failure = str(error)
+            except OSError as error:
+                if error.errno in FULL:
+                    raise
+                failure = f"{error.filename}: {error.strerror}; its files cannot be put there"
             else:
                 self._ledger.record(
                     answer.result,

@@ -60,9 +60,9 @@ def settle(made: Path, folder: Path, *, stale: Iterable[str]) -> None:
 
 def clear(folder: Path, *, stale: Iterable[str]) -> None:
     """Remove the ``stale`` files from a device's folder, and the folder if nothing is left."""
-    for name in stale:
-        (folder / name).unlink(missing_ok=True)
-    with suppress(OSError):  # other files are there, or it never was
+    with suppress(OSError):  # the user's own files are there, or it never was, or is no folder
+        for name in stale:
+            (folder / name).unlink(missing_ok=True)
         folder.rmdir()
 
 
