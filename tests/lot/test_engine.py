@@ -292,3 +292,14 @@ def test_inputs_that_vanish_are_told_and_the_others_go_on(tmp_path):
     assert "frame_1.raw: No such file" in failures(tmp_path / "out")["S00000"]
     fake_device(tmp_path / "in", 0)
     assert run(tmp_path / "out", devices).exit_status == 0
+
+
+def test_a_file_name_that_is_no_text_stops_nothing(tmp_path):
+    devices = fake_devices(tmp_path / "in", "well", "well")
+    path = tmp_path / "in" / "frame\udcff.raw"
+    stack = devices[0].stacks[0]
+    frames = (stack.frames[0], replace(stack.frames[1], path=path), stack.frames[2])
+    devices[0] = replace(devices[0], stacks=(replace(stack, frames=frames),))
+    outcome = run(tmp_path / "out", devices)
+    assert (outcome.inspected, outcome.failed) == (1, 1)
+    assert "frame\\udcff.raw: No such file" in failures(tmp_path / "out")["S00000"]

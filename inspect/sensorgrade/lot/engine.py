@@ -20,8 +20,10 @@ from sensorgrade.lot.processes import Processes
 from sensorgrade.lot.progress import Progress, Report
 from sensorgrade.lot.staging import clear, remove_strays, settle, workplace
 from sensorgrade.lot.stop import stoppable
+from sensorgrade.recipe.document import printable
 from sensorgrade.recipe.model import Recipe
 
+LONGEST_REASON = 2000  # characters
 TIME_LIMIT = 7200.0  # s for one device in a worker, unless the user says how long
 
 
@@ -219,8 +221,9 @@ class _Work:
                     wafer=device.wafer,
                     die_row=device.die_row,
                     die_column=device.die_column,
-                    reason=failure,
-                    trace=trace,
+                    # A file's name may hold bytes that are no text and that no ledger takes.
+                    reason=printable(failure, LONGEST_REASON),
+                    trace=trace and trace.encode(errors="backslashreplace").decode(),
                 ),
                 recipe=self._recipe,
                 fingerprint=self._prints[answer.number],
