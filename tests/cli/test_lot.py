@@ -11,6 +11,7 @@ from sensorgrade.cli.main import main
 from sensorgrade.lot.failure import Failure
 from sensorgrade.lot.fingerprint import Fingerprint
 from sensorgrade.lot.ledger import write_ledger
+from sensorgrade.lot.lock import run_lock
 
 SAME = Fingerprint("d", "s")
 
@@ -47,7 +48,7 @@ def test_a_failed_device_shows_why_and_a_hostile_serial_does_no_harm(run):
     answer = CliRunner().invoke(command, [str(run)])
     assert answer.exit_code == 3
     assert "\\u001b[2J=1\t\t\t\tfailed\t0.1\tno flats" in answer.output
-    assert "goes on, or was killed" in answer.output
+    assert "was killed; the same inspection given again does what is left" in answer.output
     assert "\x1b" not in answer.output
 
 
@@ -90,3 +91,10 @@ def test_wafer_maps_yields_and_clustering(run):
     assert "Neighbouring pairs of dies not accepted: 0" in answer.output
     document = json.loads(CliRunner().invoke(command, [str(run), "--wafers", "--json"]).output)
     assert document["places"]["clustering"]["pairs"] == 0
+
+
+def test_a_run_that_is_at_work_is_told_from_one_that_was_killed(run):
+    with run_lock(run):
+        answer = CliRunner().invoke(command, [str(run)])
+    assert "A run is at work (process " in answer.output
+    assert "A run is at work" not in CliRunner().invoke(command, [str(run)]).output

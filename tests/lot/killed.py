@@ -10,8 +10,8 @@ from sensorgrade.lot.progress import progress_line
 DEVICES = 12
 
 
-def main(source: Path, out: Path) -> int:
-    devices = fake_devices(source, *["slow 0.1"] * DEVICES)
+def main(source: Path, out: Path, seconds: str) -> int:
+    devices = fake_devices(source, *[f"slow {seconds}"] * DEVICES)
     with run_folder(out) as ledger:
         outcome = run_lot(
             devices,
@@ -25,4 +25,4 @@ def main(source: Path, out: Path) -> int:
 
 
 if __name__ == "__main__":
-    sys.exit(main(Path(sys.argv[1]), Path(sys.argv[2])))
+    sys.exit(main(Path(sys.argv[1]), Path(sys.argv[2]), sys.argv[3]))

@@ -109,6 +109,15 @@ def test_the_cluster_leaves_the_same_bytes_as_this_machine(tmp_path, site):
     assert replace(here, seconds=0) == replace(there, seconds=0)
 
 
+def test_sources_given_by_relative_paths_are_found_by_workers_elsewhere(
+    tmp_path, site, monkeypatch
+):
+    monkeypatch.chdir(tmp_path)
+    devices = fake_devices(Path("in"), "well")
+    assert not devices[0].frames[0].path.is_absolute()
+    assert run(Path("out"), devices, cluster=site.address).exit_status == 0
+
+
 def test_a_worker_killed_in_the_middle_costs_no_device(tmp_path, site):
     devices = fake_devices(tmp_path / "in", *["slow 0.5"] * 10)
     run(tmp_path / "here", devices, jobs=2)

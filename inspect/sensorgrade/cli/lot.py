@@ -53,6 +53,7 @@ def command(
     The tables have a row for each device and a column for each number.
     """
     from sensorgrade.lot.ledger import read_ledger
+    from sensorgrade.lot.lock import held_by
     from sensorgrade.lot.summary import device_lines
 
     with read_ledger(run) as ledger:
@@ -76,7 +77,7 @@ def command(
             from sensorgrade.cli.wafers import print_places
 
             print_places(places)
-        _print_tally(tally, runs)
+        _print_tally(tally, runs, held_by(run))
     ctx.exit(tally.exit_status)
 
 
@@ -112,7 +113,7 @@ def _print_lines(lines: "list[DeviceLine]") -> None:
             click.echo("\t".join(row))
 
 
-def _print_tally(tally: "Tally", runs: "list[Run]") -> None:
+def _print_tally(tally: "Tally", runs: "list[Run]", holder: str | None) -> None:
     parts = [
         f"{count} {word}"
         for count, word in (
@@ -125,8 +126,10 @@ def _print_tally(tally: "Tally", runs: "list[Run]") -> None:
         if count
     ]
     click.echo(f"{tally.devices} devices: {', '.join(parts) or 'none yet'}")
-    if runs and runs[-1].ending != "finished":
-        how = "was stopped" if runs[-1].ending else "goes on, or was killed"
+    if holder is not None:
+        click.echo(f"A run is at work ({holder})")
+    elif runs and runs[-1].ending != "finished":
+        how = "was stopped" if runs[-1].ending else "was killed"
         click.echo(
             f"The last run (started {runs[-1].started}) {how}; the same inspection given again"
             " does what is left"

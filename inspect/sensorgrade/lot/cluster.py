@@ -6,7 +6,7 @@ that dies again and again, or lacks this package), so the cluster is asked direc
 
 from collections.abc import Generator, Iterator, Mapping
 from contextlib import contextmanager
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import partial
 from itertools import islice
 from pathlib import Path
@@ -54,7 +54,7 @@ class Cluster:
         def submitted(count: int) -> list[Any]:
             futures = []
             for number, device in islice(left, count):
-                future = self.client.submit(run, device, number, pure=False)
+                future = self.client.submit(run, _absolute(device), number, pure=False)
                 numbers[future] = number
                 futures.append(future)
             return futures
@@ -95,6 +95,21 @@ class Cluster:
                     f"{self.address}: worker {worker} does not see {workplace.parent}; give --out"
                     " on a file system that all workers share"
                 )
+
+
+def _absolute(device: DeviceFrames) -> DeviceFrames:
+    """The device with paths that mean the same wherever a worker was started."""
+    stacks = []
+    for stack in device.stacks:
+        frames = []
+        for frame in stack.frames:
+            planes = {
+                name: replace(plane, path=plane.path and plane.path.absolute())
+                for name, plane in frame.planes.items()
+            }
+            frames.append(replace(frame, path=frame.path.absolute(), planes=planes))
+        stacks.append(replace(stack, frames=tuple(frames)))
+    return replace(device, stacks=tuple(stacks))
 
 
 def _seen(place: str) -> tuple[str, bool]:

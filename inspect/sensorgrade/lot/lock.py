@@ -3,6 +3,7 @@
 import fcntl
 import os
 import socket
+import time
 from collections.abc import Iterator
 from contextlib import contextmanager
 from datetime import UTC, datetime
@@ -11,6 +12,7 @@ from pathlib import Path
 from sensorgrade.errors import RequestError
 
 NAME = "lot.lock"
+TRIES, PAUSE = 5, 0.05  # s; someone who only looks (`held_by`) holds it for an instant
 
 
 @contextmanager
@@ -45,8 +47,25 @@ def run_lock(folder: Path) -> Iterator[None]:
         os.close(handle)
 
 
+def held_by(folder: Path) -> str | None:
+    """The run that is at work in ``folder``, as it names itself; None if there is none."""
+    path = folder / NAME
+    try:
+        handle = os.open(path, os.O_RDONLY | os.O_CLOEXEC)
+    except OSError:
+        return None
+    try:
+        fcntl.flock(handle, fcntl.LOCK_SH | fcntl.LOCK_NB)
+    except BlockingIOError:
+        return _holder(path)
+    finally:
+        os.close(handle)
+    return None
+
+
 def _held(path: Path) -> int:
     """A locked handle of the file that has this name now."""
+    tries = 0
     while True:
         handle = os.open(path, os.O_RDWR | os.O_CREAT | os.O_CLOEXEC, 0o666)
         try:
@@ -55,6 +74,12 @@ def _held(path: Path) -> int:
             if path.exists() and path.stat().st_ino == os.fstat(handle).st_ino:
                 os.ftruncate(handle, 0)
                 return handle
+        except BlockingIOError:
+            tries += 1
+            if tries == TRIES:
+                os.close(handle)
+                raise
+            time.sleep(PAUSE)
         except OSError:
             os.close(handle)
             raise
