@@ -201,10 +201,22 @@ def test_a_link_in_place_of_a_devices_folder_is_not_followed(tmp_path):
 @pytest.mark.parametrize("behaviours", [["slow 30"], ["well", "slow 30", "slow 30", "well"]])
 def test_a_signal_stops_the_run_with_what_is_done_kept(tmp_path, number, behaviours):
     devices = fake_devices(tmp_path / "in", *behaviours)
-    timer = threading.Timer(3.0, os.kill, (os.getpid(), number))
-    timer.start()
-    outcome = run(tmp_path / "out", devices, jobs=2)
-    timer.join()
+    asked: list[Progress] = []
+
+    def interrupt(progress: Progress) -> None:
+        if not asked and (progress.stage == "read" or progress.inspected):
+            asked.append(progress)
+            threading.Timer(0.3, os.kill, (os.getpid(), number)).start()
+
+    with run_folder(tmp_path / "out") as ledger:
+        outcome = run_lot(
+            devices,
+            well,
+            ledger=ledger,
+            recipe=RECIPE,
+            options=LotOptions(jobs=2),
+            report=interrupt,
+        )
     assert outcome.stopped is not None and "same command again" in outcome.stopped
     assert outcome.exit_status == 3
     assert outcome.inspected == (len(behaviours) > 1)

@@ -153,3 +153,15 @@ def test_workers_do_not_outlive_a_run_that_was_killed(tmp_path, undisturbed, lin
     run.wait()
     assert gone(run)
     ended(run)
+
+
+@pytest.mark.parametrize("delay", [0.0, 0.1, 0.2, 0.4, 1.0])
+def test_ctrl_c_for_the_whole_group_of_processes_says_nothing_but_how_to_go_on(tmp_path, delay):
+    run = started(tmp_path / "in", tmp_path / "out", seconds=0.3)
+    assert run.stdout is not None
+    run.stdout.readline()
+    time.sleep(delay)
+    os.killpg(run.pid, signal.SIGINT)
+    _, error = run.communicate(timeout=60)
+    assert error == ""
+    assert run.returncode == 3

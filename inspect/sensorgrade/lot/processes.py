@@ -2,7 +2,6 @@
 
 import os
 import re
-import signal
 import threading
 import time
 import warnings
@@ -24,6 +23,7 @@ from sensorgrade.lot.attempt import (
     last_stage,
     note_of,
 )
+from sensorgrade.lot.stop import uninterrupted
 
 PARENT_CHECK = 0.5  # s between two looks at whether the parent still lives
 
@@ -107,7 +107,8 @@ class Processes:
                 max_nbytes=None,
             )
             work = [joblib.delayed(run)(device, number) for number, device in devices.items()]
-            answers = parallel(work)
+            with uninterrupted():
+                answers = parallel(work)
         try:
             # "yield from" would have them closed before `finally` is reached.
             for answer in answers:  # noqa: UP028
@@ -119,8 +120,7 @@ class Processes:
 
 
 def _begin_worker(parent: int) -> None:
-    """Leave Ctrl-C to the parent, and end soon after it was killed, whatever is at work then."""
-    signal.signal(signal.SIGINT, signal.SIG_IGN)
+    """End this worker soon after its parent was killed, whatever is at work then."""
 
     def watch() -> None:
         while os.getppid() == parent:

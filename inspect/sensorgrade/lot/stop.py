@@ -48,3 +48,20 @@ def stoppable() -> Iterator[Stop]:
     finally:
         for number, handler in earlier.items():
             signal.signal(number, handler)
+
+
+@contextmanager
+def uninterrupted() -> Iterator[None]:
+    """Start processes that Ctrl-C never reaches, though it goes to the whole group of them.
+
+    They inherit that it is ignored, from their first instruction on. It is lost for this process
+    too while the block runs, which must be short.
+    """
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+    earlier = signal.signal(signal.SIGINT, signal.SIG_IGN)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGINT, earlier)
