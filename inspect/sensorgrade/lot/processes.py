@@ -7,7 +7,7 @@ import time
 import warnings
 from collections.abc import Callable, Generator, Mapping
 from concurrent.futures.process import BrokenProcessPool
-from contextlib import closing
+from contextlib import closing, suppress
 from dataclasses import dataclass
 from functools import partial
 from pathlib import Path
@@ -120,7 +120,12 @@ class Processes:
 
 
 def _begin_worker(parent: int) -> None:
-    """End this worker soon after its parent was killed, whatever is at work then."""
+    """End this worker soon after its parent was killed, whatever is at work then.
+
+    When the machine runs out of memory, a worker is to be killed and not the parent.
+    """
+    with suppress(OSError):  # Linux only
+        Path("/proc/self/oom_score_adj").write_text("500", encoding="ascii")
 
     def watch() -> None:
         while os.getppid() == parent:
