@@ -1,0 +1,278 @@
+"""What a device page holds, gathered from one device's results."""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from datetime import UTC, datetime
+from itertools import groupby
+from typing import Any
+
+from markupsafe import Markup
+
+from sensorgrade.defects.defect import DefectCount, Defects
+from sensorgrade.lot.result import DeviceResult, InputFile
+from sensorgrade.masters.master import Master, Masters
+from sensorgrade.measure.stage import StageResult
+from sensorgrade.measurement import Finding
+from sensorgrade.recipe.model import Recipe
+from sensorgrade.report.bars import LIMIT_AT, BarGroup, bar_groups, closest
+from sensorgrade.report.defect_rows import DefectRows, PrintedDefect, defect_rows
+from sensorgrade.report.figures import figures
+from sensorgrade.report.marks import KindMark
+from sensorgrade.report.numbers import measurement_text, name_text, number_text, unit_text
+from sensorgrade.report.page import CAUTION, policy, static_text, told
+from sensorgrade.report.picture import (
+    CENTRE,
+    NO_VALUE,
+    STEPS,
+    TILE,
+    Picture,
+    picture,
+)
+from sensorgrade.report.svg import svg
+from sensorgrade.report.tiles import tiles_around
+
+
+@dataclass(frozen=True, slots=True)
+class Figure:
+    """A drawn plot with its words."""
+
+    key: str
+    title: str
+    drawing: Markup
+    caption: str
+
+
+@dataclass(frozen=True, slots=True)
+class MeasuredRow:
+    """One quantity, with a text for each place it was measured at."""
+
+    name: str
+    values: tuple[tuple[str, str, int], ...]
+
+
+@dataclass(frozen=True, slots=True)
+class PictureFrame:
+    """What stands around a picture: title, stretch as text, alternative text, thumbnail."""
+
+    title: str
+    note: str
+    low: str
+    high: str
+    unit: str
+    alt: str
+    thumbnail: str
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class DevicePage:
+    """Everything that the template device.html receives."""
+
+    style: Markup = told("The style sheet, put into the page.")
+    script: Markup = told("The script, put into the page.")
+    policy: str = told("The content security policy that shuts out everything else.")
+    version: str = told("The program's version, as provenance has it.")
+    serial: str = told("The device's serial number, as it was found in the frames.")
+    identity: tuple[tuple[str, str], ...] = told("Label and text of lot, wafer, die, recipe, date.")
+    decision: str = told("accept, reject, undecided or ungraded.")
+    verdict: str = told("The decision as a word for the plate on top.")
+    grade: str = told("The grade met, or words saying that none was.")
+    reason: str = told("The one sentence that the decision turns on.")
+    more_reasons: tuple[str, ...] = told("The other reasons, weightiest first.")
+    limit_groups: tuple[BarGroup, ...] = told("Every limit as a bar, grade by grade.")
+    limit_at: float = told("Where the limit stands on every bar, in % of its width.")
+    pictures: tuple[PictureFrame, ...] = told("The masters that there are, as pictures.")
+    no_picture: tuple[str, ...] = told("A sentence for each master that could not be made.")
+    kinds: tuple[KindMark, ...] = told("The kinds of defect in the table, with their marks.")
+    counts: tuple[tuple[str, str, int, str], ...] = told(
+        "Kind, scope, number found and expected number with its doubt of every count."
+    )
+    printed_defects: tuple[PrintedDefect, ...] = told("The first rows of the defect table.")
+    defect_total: int = told("How many defects the device has.")
+    defects_left_out: int = told("How many of them are in defects.ecsv only.")
+    figures: tuple[Figure, ...] = told("The plots of the stages that ran.")
+    not_measured: tuple[tuple[str, str], ...] = told("Stages that could not run, and why.")
+    measured: tuple[MeasuredRow, ...] = told("Every measurement with its doubt, place by place.")
+    findings: tuple[Finding, ...] = told("What the audit noticed, gravest first.")
+    inputs: tuple[InputFile, ...] = told("The raw files that were used.")
+    recipe_text: str = told("The recipe as it was written.")
+    recipe_sha256: str = told("The recipe's digest.")
+    versions: tuple[tuple[str, str], ...] = told("Program and libraries with their versions.")
+    caution: str = told("What a grade does not do, and what is dangerous at a bench.")
+    data: dict[str, Any] = told("Pictures and defects in the form that the script reads.")
+
+
+VERDICTS = {
+    "accept": "Accepted",
+    "reject": "Rejected",
+    "undecided": "Undecided",
+    "ungraded": "Not graded",
+}
+GRAVITY = {"error": 0, "warning": 1, "note": 2}
+
+
+def device_data(
+    result: DeviceResult,
+    *,
+    masters: Masters,
+    defects: Defects,
+    stages: Mapping[str, StageResult],
+    recipe: Recipe,
+) -> DevicePage:
+    """The page's data; see `device_page.device_page`."""
+    rows = defect_rows(defects)
+    tiles = tiles_around(rows.rows, rows.column_places, defects.mask.shape)
+    present = [one for one in (masters.bias, masters.dark, masters.flat) if one is not None]
+    pictures = [
+        picture(master.values, title=f"master {master.kind}", unit=master.unit, tiles=tiles)
+        for master in present
+    ]
+    script = static_text("pictures.js", "defects.js")
+    graded = result.graded
+    provenance = result.provenance
+    return DevicePage(
+        style=static_text("page.css"),
+        script=script,
+        policy=policy(script),
+        version=provenance.versions.get("sensorgrade", ""),
+        serial=result.serial,
+        identity=_identity(result),
+        decision=graded.decision,
+        verdict=VERDICTS[graded.decision],
+        grade=graded.grade or ("no grade met" if graded.limits else "no grade asked for"),
+        reason=_reason(result),
+        more_reasons=graded.reasons[1:],
+        limit_groups=bar_groups(graded),
+        limit_at=round(LIMIT_AT, 2),
+        pictures=tuple(_frame(one, master) for one, master in zip(pictures, present, strict=True)),
+        no_picture=_no_picture(masters),
+        kinds=rows.kinds,
+        counts=tuple(_count(one) for one in result.defects),
+        printed_defects=rows.printed,
+        defect_total=rows.total,
+        defects_left_out=rows.total - len(rows.rows),
+        figures=tuple(
+            Figure(plot.key, plot.title, Markup(svg(plot)), plot.caption)
+            for plot in figures(masters=masters, stages=stages)
+        ),
+        not_measured=tuple(
+            (name_text(stage), sentence) for stage, sentence in result.not_measured.items()
+        ),
+        measured=_measured(result),
+        findings=tuple(sorted(result.findings, key=lambda one: GRAVITY[one.severity])),
+        inputs=provenance.inputs,
+        recipe_text=recipe.text,
+        recipe_sha256=provenance.recipe_sha256,
+        versions=tuple(provenance.versions.items()),
+        caution=CAUTION,
+        data=_script_data(pictures, rows, tiles.tolist(), defects.mask.shape),
+    )
+
+
+def _identity(result: DeviceResult) -> tuple[tuple[str, str], ...]:
+    """Label and text, only of what is known."""
+    die = None
+    if result.die_row is not None and result.die_column is not None:
+        die = f"row {result.die_row}, column {result.die_column}"
+    taken = None
+    if result.taken is not None:
+        taken = datetime.fromtimestamp(result.taken, UTC).strftime("%Y-%m-%d %H:%M UTC")
+    known = {
+        "Serial": result.serial,
+        "Lot": result.lot,
+        "Wafer": result.wafer,
+        "Die": die,
+        "Recipe": result.provenance.recipe,
+        "First frame": taken,
+    }
+    return tuple((label, text) for label, text in known.items() if text is not None)
+
+
+def _reason(result: DeviceResult) -> str:
+    """The weightiest reason; at the top grade, what came closest to costing it."""
+    if result.graded.reasons:
+        return result.graded.reasons[0]
+    nearest = closest(result.graded)
+    if nearest is None:
+        return "Nothing stands against this grade."
+    return f"Every limit of {result.graded.grade} is met. The closest: {nearest.reason}"
+
+
+def _frame(shown: Picture, master: Master) -> PictureFrame:
+    low, high = number_text(shown.coding.low), number_text(shown.coding.high)
+    unit = unit_text(shown.unit)
+    scaled = f"Black is {low} {unit} and white {high} {unit}".replace("  ", " ")
+    note = f"{len(master.stack.frames)} frames"
+    if master.kind == "dark" and master.stack.exposure is not None:
+        note += f" of {number_text(master.stack.exposure)} s"
+    if master.kind == "flat":
+        note += ", over its median"
+    return PictureFrame(
+        title=f"Master {master.kind}",
+        note=note,
+        low=low,
+        high=high,
+        unit=unit,
+        alt=f"Master {master.kind} of {shown.columns} × {shown.rows} pixels, grey. {scaled};"
+        " row 1 is at the bottom.",
+        thumbnail=shown.thumbnail,
+    )
+
+
+def _no_picture(masters: Masters) -> tuple[str, ...]:
+    lacking = {"bias": masters.bias, "dark": masters.dark, "flat": masters.flat}
+    return tuple(
+        f"There is no master {kind}: the set has no {kind} frames that make one."
+        for kind, master in lacking.items()
+        if master is None
+    )
+
+
+def _count(count: DefectCount) -> tuple[str, str, int, str]:
+    doubt = f"{number_text(count.expected, 5)} ± {number_text(count.standard_uncertainty, 2)}"
+    return name_text(count.kind), count.scope, count.found, doubt
+
+
+def _measured(result: DeviceResult) -> tuple[MeasuredRow, ...]:
+    """Measurements of one name together, in the order of the stages."""
+    order = {name: i for i, name in enumerate(dict.fromkeys(m.name for m in result.measurements))}
+    ordered = sorted(result.measurements, key=lambda one: order[one.name])
+    return tuple(
+        MeasuredRow(
+            name_text(name), tuple((one.scope, measurement_text(one), one.n) for one in group)
+        )
+        for name, group in groupby(ordered, key=lambda one: one.name)
+    )
+
+
+def _script_data(
+    pictures: list[Picture], rows: DefectRows, tiles: list[list[int]], shape: tuple[int, int]
+) -> dict[str, Any]:
+    """Short names only where the same key comes again and again."""
+    return {
+        "rows": shape[0],
+        "columns": shape[1],
+        "tile": TILE,
+        "tiles": tiles,
+        "steps": STEPS,
+        "centre": CENTRE,
+        "noValue": NO_VALUE,
+        "pictures": [
+            {
+                "title": one.title,
+                "unit": unit_text(one.unit),
+                "block": one.block,
+                "median": one.coding.median,
+                "spread": one.coding.spread,
+                "low": one.coding.low,
+                "high": one.coding.high,
+                "overview": one.overview,
+                "tiles": one.tiles,
+            }
+            for one in pictures
+        ],
+        "kinds": [
+            {"name": name_text(one.kind), "path": one.path, "colour": one.colour}
+            for one in rows.kinds
+        ],
+        "defects": {**rows.columns, "units": [unit_text(u) for u in rows.columns["units"]]},
+    }

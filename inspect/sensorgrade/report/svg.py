@@ -1,0 +1,210 @@
+"""Plots as small inline SVG: drawn in the page's own colours, so that light, dark and print fit."""
+
+from collections.abc import Iterator
+from html import escape
+
+import numpy as np
+from numpy.typing import NDArray
+
+from sensorgrade.report.plot import Axis, Mark, Plot, Series
+from sensorgrade.report.scale import Scale, scale
+
+WIDTH = 440.0
+LEFT, RIGHT, TOP, BOTTOM = 62.0, 12.0, 10.0, 46.0
+UPPER = 200.0  # height of the main panel
+LOWER = 70.0  # height of the second panel
+GAP = 16.0
+LEGEND_LINE = 17.0
+PALETTE = 6  # colours s0 … s5 of the style sheet
+MOST_POINTS = 1500  # a thinned cloud of points looks the same
+
+
+def svg(plot: Plot) -> str:
+    """The plot as one ``<svg>`` element; all text is escaped.
+
+    Colours are classes ``s0`` … ``s5`` of the page, each with its own shape of point, so that no
+    meaning hangs on colour alone.
+    """
+    x_scale = scale(plot.x, plot.series + plot.lower, "x")
+    legend = _legend(plot)
+    head = TOP + LEGEND_LINE * len(legend)
+    below = head + UPPER + (GAP + LOWER if plot.lower else 0.0)
+    height = below + BOTTOM
+    parts = [
+        f'<svg class="plot" viewBox="0 0 {WIDTH:g} {height:g}" role="img"'
+        f' aria-labelledby="{escape(plot.key)}-alt">'
+        f'<title id="{escape(plot.key)}-alt">{escape(plot.alt)}</title>'
+    ]
+    parts += [line for row, line_parts in enumerate(legend) for line in _place(line_parts, row)]
+    parts += _panel(plot.series, plot.marks, plot.y, x_scale, head, UPPER, ticks=6)
+    if plot.lower and plot.lower_y is not None:
+        top = head + UPPER + GAP
+        parts += _panel(plot.lower, (), plot.lower_y, x_scale, top, LOWER, ticks=3)
+    parts += _x_axis(plot.x, x_scale, below)
+    parts.append("</svg>")
+    return "".join(parts)
+
+
+def _panel(
+    series: tuple[Series, ...],
+    marks: tuple[Mark, ...],
+    axis: Axis,
+    x_scale: Scale,
+    top: float,
+    height: float,
+    *,
+    ticks: int,
+) -> Iterator[str]:
+    """Grid, y axis, marks and series of one panel."""
+    y_scale = scale(axis, series, "y")
+    right = WIDTH - RIGHT
+    for value, text in y_scale.ticks(ticks):
+        y = top + height * (1 - y_scale.place(np.array(value)))
+        yield f'<path class="grid" d="M{LEFT:g} {y:.1f}H{right:g}"/>'
+        yield f'<text class="tick" x="{LEFT - 6:g}" y="{y + 4:.1f}" text-anchor="end">{text}</text>'
+    yield f'<path class="axis" d="M{LEFT:g} {top:g}V{top + height:g}H{right:g}"/>'
+    yield (
+        f'<text class="label" transform="translate(13 {top + height / 2:.1f}) rotate(-90)"'
+        f' text-anchor="middle">{escape(axis.label)}</text>'
+    )
+    for mark in marks:
+        yield from _mark(mark, x_scale, y_scale, top, height)
+    for one in series:
+        yield from _series(one, x_scale, y_scale, top, height)
+
+
+def _mark(mark: Mark, x_scale: Scale, y_scale: Scale, top: float, height: float) -> Iterator[str]:
+    width = WIDTH - LEFT - RIGHT
+    if mark.x is not None:
+        place = float(x_scale.place(np.array(mark.x)))
+        if 0 <= place <= 1:
+            x = LEFT + width * place
+            late = place > 0.6
+            yield f'<path class="mark" d="M{x:.1f} {top:g}V{top + height:g}"/>'
+            yield (
+                f'<text class="marked" x="{x + (-4 if late else 4):.1f}" y="{top + 11:g}"'
+                f' text-anchor="{"end" if late else "start"}">{escape(mark.label)}</text>'
+            )
+    if mark.y is not None:
+        place = float(y_scale.place(np.array(mark.y)))
+        if 0 <= place <= 1:
+            y = top + height * (1 - place)
+            yield f'<path class="mark" d="M{LEFT:g} {y:.1f}H{WIDTH - RIGHT:g}"/>'
+            yield (
+                f'<text class="marked" x="{WIDTH - RIGHT - 3:g}" y="{y - 4:.1f}"'
+                f' text-anchor="end">{escape(mark.label)}</text>'
+            )
+
+
+def _series(
+    one: Series, x_scale: Scale, y_scale: Scale, top: float, height: float
+) -> Iterator[str]:
+    """The series as one path; points past the axis ends are left out, lines are cut there."""
+    x = np.asarray(one.x, dtype=np.float64)
+    y = np.asarray(one.y, dtype=np.float64)
+    error = one.y_error
+    if one.draw == "steps":
+        x, y = np.repeat(x, 2)[1:-1], np.repeat(y, 2)
+        y = np.where(y > 0, y, y_scale.low) if y_scale.log else y
+    elif one.draw == "points" and x.size > MOST_POINTS:
+        keep = np.linspace(0, x.size - 1, MOST_POINTS).astype(int)
+        x, y = x[keep], y[keep]
+        error = None if error is None else error[keep]
+    across = x_scale.place(x)
+    up = y_scale.place(y)
+    inside = np.isfinite(across) & np.isfinite(up) & (across > -0.001) & (across < 1.001)
+    px, py = _pixels(across, np.clip(up, 0, 1), top, height)
+    colour = f"s{one.colour % PALETTE}"
+    if one.draw == "points":
+        inside &= (up > -0.001) & (up < 1.001)
+        shape = POINTS[one.colour % PALETTE] if inside.sum() <= 200 else POINTS_SMALL
+        if error is not None:
+            low = np.clip(y_scale.place(y - error), 0, 1)
+            high = np.clip(y_scale.place(y + error), 0, 1)
+            _, bottom = _pixels(across, np.nan_to_num(low), top, height)
+            _, above = _pixels(across, high, top, height)
+            bars = "".join(
+                f"M{a:.1f} {b:.1f}V{c:.1f}"
+                for a, b, c in zip(px[inside], bottom[inside], above[inside], strict=True)
+                if abs(b - c) > 2
+            )
+            if bars:
+                yield f'<path class="line {colour}" d="{bars}"/>'
+        d = "".join(f"M{a:.1f} {b:.1f}{shape}" for a, b in zip(px[inside], py[inside], strict=True))
+        yield f'<path class="points {colour}" d="{d}"/>'
+        return
+    dashes = " dashes" if one.draw == "dashes" else ""
+    yield f'<path class="line {colour}{dashes}" d="{_polyline(px, py, inside)}"/>'
+
+
+def _pixels(
+    across: NDArray[np.float64], up: NDArray[np.float64], top: float, height: float
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    return LEFT + (WIDTH - LEFT - RIGHT) * across, top + height * (1 - up)
+
+
+def _polyline(px: NDArray[np.float64], py: NDArray[np.float64], inside: NDArray[np.bool_]) -> str:
+    """Path data with a new start after every gap."""
+    d = []
+    pen = "M"
+    for a, b, drawn in zip(px.tolist(), py.tolist(), inside.tolist(), strict=True):
+        if drawn:
+            d.append(f"{pen}{a:.1f} {b:.1f}")
+            pen = "L"
+        else:
+            pen = "M"
+    return "".join(d)
+
+
+# Relative path of one point, about its centre: circle, square, diamond, triangle, cross, plus
+POINTS = (
+    "m-2.6 0a2.6 2.6 0 1 0 5.2 0a2.6 2.6 0 1 0-5.2 0z",
+    "m-2.4-2.4h4.8v4.8h-4.8z",
+    "m0-3.4l3.4 3.4l-3.4 3.4l-3.4-3.4z",
+    "m0-3.2l3.2 5.4h-6.4z",
+    "m-2.6-2.6l5.2 5.2m0-5.2l-5.2 5.2",
+    "m-3.2 0h6.4m-3.2-3.2v6.4",
+)
+POINTS_SMALL = "m-.9-.9h1.8v1.8h-1.8z"
+
+
+def _x_axis(axis: Axis, x_scale: Scale, base: float) -> Iterator[str]:
+    width = WIDTH - LEFT - RIGHT
+    for value, text in x_scale.ticks(6):
+        x = LEFT + width * float(x_scale.place(np.array(value)))
+        yield f'<path class="axis" d="M{x:.1f} {base:g}v4"/>'
+        yield f'<text class="tick" x="{x:.1f}" y="{base + 17:g}" text-anchor="middle">{text}</text>'
+    yield (
+        f'<text class="label" x="{LEFT + width / 2:g}" y="{base + 38:g}"'
+        f' text-anchor="middle">{escape(axis.label)}</text>'
+    )
+
+
+def _legend(plot: Plot) -> list[list[tuple[Series, float]]]:
+    """Labelled series put in lines, each with its x; empty for a single one."""
+    named = [one for one in plot.series if one.label]
+    if len(named) < 2:
+        return []
+    lines: list[list[tuple[Series, float]]] = [[]]
+    x = LEFT
+    for one in named:
+        width = 26 + 6.4 * len(one.label)
+        if lines[-1] and x + width > WIDTH - RIGHT:
+            lines.append([])
+            x = LEFT
+        lines[-1].append((one, x))
+        x += width + 8
+    return lines
+
+
+def _place(entries: list[tuple[Series, float]], row: int) -> Iterator[str]:
+    """One line of the legend."""
+    y = TOP + LEGEND_LINE * row + 4
+    for one, x in entries:
+        colour = one.colour % PALETTE
+        if one.draw == "points":
+            yield f'<path class="points s{colour}" d="M{x + 8:g} {y:g}{POINTS[colour]}"/>'
+        else:
+            dashes = " dashes" if one.draw == "dashes" else ""
+            yield f'<path class="line s{colour}{dashes}" d="M{x:g} {y:g}h16"/>'
+        yield f'<text class="key" x="{x + 21:g}" y="{y + 4:g}">{escape(one.label)}</text>'
