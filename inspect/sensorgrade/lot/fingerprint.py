@@ -1,6 +1,7 @@
 """What a device's result depends on, as two digests: how a later run knows it need not repeat."""
 
 import hashlib
+from contextlib import suppress
 from dataclasses import dataclass, fields
 from pathlib import Path
 
@@ -53,18 +54,21 @@ def contents(device: DeviceFrames) -> dict[str, str]:
     """SHA-256 of every frame's file, by label; files that cannot be read are left out."""
     digests = {}
     for frame in device.frames:
-        digest = _file_sha256(frame.path)
-        if digest is not None:
-            digests[frame.label] = digest
+        with suppress(OSError):
+            digests[frame.label] = file_sha256(frame.path)
     return digests
 
 
-def _file_sha256(path: Path) -> str | None:
+def file_sha256(path: Path) -> str:
+    """SHA-256 of a file as hexadecimal digits.
+
+    Raises
+    ------
+    OSError
+        It cannot be read.
+    """
     digest = hashlib.sha256()
-    try:
-        with path.open("rb") as file:
-            while block := file.read(BLOCK):
-                digest.update(block)
-    except OSError:
-        return None
+    with path.open("rb") as file:
+        while block := file.read(BLOCK):
+            digest.update(block)
     return digest.hexdigest()
