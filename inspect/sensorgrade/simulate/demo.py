@@ -5,6 +5,7 @@ twelve of them from two wafers. Four are fit for science, four for the laborator
 are to be sent back, each for a reason of its own.
 """
 
+from collections.abc import Iterable
 from dataclasses import dataclass, replace
 from pathlib import Path
 
@@ -31,7 +32,7 @@ ROWS, COLUMNS, OVERSCAN = 256, 160, 16  # of each output
 class DemoDevice:
     """One device of the lot: what it is, the frames taken, and the grade it deserves.
 
-    ``grade`` is None for a device that must be rejected; ``why`` is one sentence for people.
+    ``expected`` is None for a device that must be rejected; ``why`` is one sentence for people.
     """
 
     serial: str
@@ -40,7 +41,7 @@ class DemoDevice:
     die_column: int
     model: SensorModel
     plan: FramePlan
-    grade: str | None
+    expected: str | None
     why: str
 
 
@@ -151,16 +152,20 @@ def demo_lot() -> tuple[DemoDevice, ...]:
     ]
     plan = _plan()
     return tuple(
-        DemoDevice(f"HRN-{number:03d}", wafer, row, column, model, plan, grade, why)
-        for number, (wafer, row, column, model, grade, why) in enumerate(stories, start=101)
+        DemoDevice(f"HRN-{number:03d}", wafer, row, column, model, plan, expected, why)
+        for number, (wafer, row, column, model, expected, why) in enumerate(stories, start=101)
     )
 
 
-def write_demo_lot(folder: Path, *, seed: int = 0, threads: int = -1) -> None:
+def write_demo(
+    lot: Iterable[DemoDevice], folder: Path, *, seed: int = 0, threads: int = -1
+) -> None:
     """Take the frames of every device and write them, each device in a folder of its own.
 
     Parameters
     ----------
+    lot : iterable of DemoDevice
+        From `demo_lot`.
     folder : Path
         Receives one folder for each device, named by serial number.
     seed : int
@@ -174,7 +179,7 @@ def write_demo_lot(folder: Path, *, seed: int = 0, threads: int = -1) -> None:
         A file cannot be written.
     """
     Parallel(n_jobs=threads, prefer="threads")(
-        delayed(_write)(device, folder, seed) for device in demo_lot()
+        delayed(_write)(device, folder, seed) for device in lot
     )
 
 
