@@ -16,6 +16,7 @@ from sensorgrade.recipe.library import recipe_folder, recipe_names
 READY = (
     "cmos-12-bit",
     "colour-module",
+    "demo",
     "four-output-ccd",
     "full-frame-ccd",
     "pocket-pumping",

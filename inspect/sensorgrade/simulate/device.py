@@ -58,7 +58,7 @@ def simulate_device(
     light = _lamp(plan, _generator(seed, device, 2))
     stacks = []
     number = 0
-    for stack in plan.stacks:
+    for stack, level in zip(plan.stacks, _levels(plan), strict=True):
         frames = []
         for _ in range(stack.frames):
             conditions = Conditions(
@@ -70,9 +70,9 @@ def simulate_device(
             raw = raw_frame(
                 model, layout, maps, illumination, conditions, _generator(seed, device, 3 + number)
             )
-            frames.append(_frame(raw, stack, plan, number, times[number]))
+            frames.append(_frame(raw, stack, plan, level, number, times[number]))
             number += 1
-        stacks.append(_stack(stack, plan, tuple(frames)))
+        stacks.append(_stack(stack, plan, level, tuple(frames)))
     return SimulatedDevice(
         frames=DeviceFrames(serial=serial, folder=_folder(serial), stacks=tuple(stacks)),
         truth=device_truth(model, plan, layout, maps),
@@ -135,28 +135,54 @@ def _temperature(stack: StackPlan, plan: FramePlan) -> float:
     return plan.temperature if stack.temperature is None else stack.temperature
 
 
+def _levels(plan: FramePlan) -> list[float | None]:
+    """What each stack's frames say of their light: electron/s, or electron if no time is given.
+
+    Nothing where the exposure time alone tells it, as for a lamp that shines steadily.
+    """
+    flats = [stack for stack in plan.stacks if stack.kind == "flat"]
+    if not all(stack.exposure for stack in flats):
+        rates = [stack.light for stack in plan.stacks]
+    else:
+        rates = [stack.light / (stack.exposure or 1.0) for stack in plan.stacks]
+        told = [rate for rate, stack in zip(rates, plan.stacks, strict=True) if stack in flats]
+        if len(flats) > 1 and np.allclose(told, told[0]):
+            return [None] * len(rates)
+    return [
+        rate if stack.kind == "flat" else None
+        for rate, stack in zip(rates, plan.stacks, strict=True)
+    ]
+
+
 def _frame(
-    raw: NDArray[np.uint16], stack: StackPlan, plan: FramePlan, number: int, time: float
+    raw: NDArray[np.uint16],
+    stack: StackPlan,
+    plan: FramePlan,
+    level: float | None,
+    number: int,
+    time: float,
 ) -> Frame:
     return frame_from_array(
         raw,
         kind=stack.kind,
         exposure=stack.exposure,
         temperature=_temperature(stack, plan),
-        level=stack.light if stack.kind == "flat" else None,
+        level=level,
         wavelength=stack.wavelength,
         time=START + time,
         name=f"{number:04d}_{stack.kind}.fits",
     )
 
 
-def _stack(stack: StackPlan, plan: FramePlan, frames: tuple[Frame, ...]) -> Stack:
+def _stack(
+    stack: StackPlan, plan: FramePlan, level: float | None, frames: tuple[Frame, ...]
+) -> Stack:
     return Stack(
         kind=stack.kind,
         frames=frames,
         exposure=stack.exposure,
         temperature=_temperature(stack, plan),
-        level=stack.light if stack.kind == "flat" else None,
+        level=level,
         wavelength=stack.wavelength,
     )
 

@@ -21,7 +21,7 @@ def write_device(simulated: SimulatedDevice, folder: Path) -> None:
 
     Samples are 16-bit, unsigned through BZERO (FITS 4.0, 4.4.2.5). Headers say what a bench's
     would: IMAGETYP, EXPTIME [s], CCD-TEMP [degC], DATE-OBS (UTC), SERIAL, and where they are known
-    LEVEL (light [electron]), FILTER, LOT, WAFER, DIEROW and DIECOL. ``truth.json`` comes last, so
+    LEVEL (light), FILTER, LOT, WAFER, DIEROW and DIECOL. ``truth.json`` comes last, so
     a folder that has it is complete.
 
     Raises
@@ -68,7 +68,7 @@ def _fits(frame: Frame, device: DeviceFrames) -> bytes:
     if frame.temperature is not None:
         header["CCD-TEMP"] = (frame.temperature, "[deg C] sensor temperature")
     if frame.level is not None:
-        header["LEVEL"] = (frame.level, "[electron] light where the lamp is brightest")
+        header["LEVEL"] = (frame.level, "light in any unit in proportion to it")
     if frame.wavelength is not None:
         header["FILTER"] = (frame.wavelength, "[nm] wavelength, or filter")
     if frame.time is not None:
