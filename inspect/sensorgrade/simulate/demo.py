@@ -67,7 +67,7 @@ def demo_lot() -> tuple[DemoDevice, ...]:
             "04",
             3,
             3,
-            with_defects(DefectModel(kind="hot", count=150, current=150.0)),
+            with_defects(DefectModel(kind="hot", count=150, current=50.0)),
             "engineering",
             "150 hot pixels are too many for long exposures, yet can be masked.",
         ),
@@ -75,7 +75,7 @@ def demo_lot() -> tuple[DemoDevice, ...]:
             "04",
             3,
             4,
-            with_defects(DefectModel(kind="hot", count=8, current=150.0)),
+            with_defects(DefectModel(kind="hot", count=8, current=50.0)),
             "science",
             "A handful of hot pixels, well within what science allows.",
         ),
@@ -230,7 +230,7 @@ def _sound() -> SensorModel:
         offsets=Offsets(pixel=0.8, column=0.3),
         cti_parallel=1e-6,
         cti_serial=1e-6,
-        defects=(DefectModel(kind="hot", count=2, current=100.0),),
+        defects=(DefectModel(kind="hot", count=2, current=50.0),),
     )
 
 
