@@ -7,20 +7,22 @@ from pathlib import Path
 UNFINISHED = ".unfinished-"  # how names of work in progress begin; a later run removes them
 
 
-def write_whole(path: Path, content: str | bytes) -> None:
+def write_whole(path: Path, *parts: str | bytes | memoryview) -> None:
     """Write a file beside its place, have it on the disk, then give it its name.
+
+    The parts follow each other without gap.
 
     Raises
     ------
     OSError
         It could not be written; nothing was changed and nothing is left behind.
     """
-    data = content.encode() if isinstance(content, str) else content
     handle, name = tempfile.mkstemp(prefix=UNFINISHED, dir=path.parent)
     unfinished = Path(name)
     try:
         with os.fdopen(handle, "wb") as file:
-            file.write(data)
+            for part in parts:
+                file.write(part.encode() if isinstance(part, str) else part)
             file.flush()
             os.fchmod(file.fileno(), 0o666 & ~_umask())
             os.fsync(file.fileno())

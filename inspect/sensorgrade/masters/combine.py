@@ -3,6 +3,12 @@
 import numpy as np
 from numpy.typing import NDArray
 
+from sensorgrade.kernels.combine import (
+    differences,
+    divided,
+    less_light_free,
+    standard_errors,
+)
 from sensorgrade.masters.master import Master, Masters
 from sensorgrade.masters.reduced import Reduced, StackImage
 
@@ -40,10 +46,21 @@ def _bias(image: StackImage) -> Master:
 
 
 def _dark(image: StackImage, bias: StackImage) -> Master:
+    values, uncertainty = np.empty_like(image.mean), np.empty_like(image.mean)
+    differences(
+        image.mean.ravel(),
+        image.variance.ravel(),
+        image.count.ravel(),
+        bias.mean.ravel(),
+        bias.variance.ravel(),
+        bias.count.ravel(),
+        values.ravel(),
+        uncertainty.ravel(),
+    )
     return Master(
         kind="dark",
-        values=image.mean - bias.mean,
-        uncertainty=np.hypot(_standard_error(image), _standard_error(bias)),
+        values=values,
+        uncertainty=uncertainty,
         count=image.count,
         unit="DN",
         stack=image.stack,
@@ -56,14 +73,16 @@ def _flat(image: StackImage, reduced: Reduced, dark: Master | None) -> Master:
     Without a bias frame the reduction's bias level is taken, which is 0 where overscan was
     subtracted. Dark charge is taken out in proportion to the exposure.
     """
-    values = image.mean - (_bias_levels(reduced) if reduced.bias is None else reduced.bias.mean)
+    base = _bias_levels(reduced) if reduced.bias is None else reduced.bias.mean
+    share, unlit = 0.0, base
     if dark is not None and dark.stack.exposure and image.stack.exposure:
-        values -= dark.values * np.float32(image.stack.exposure / dark.stack.exposure)
-    middle = np.float32(_median(values))
+        share, unlit = image.stack.exposure / dark.stack.exposure, dark.values
+    values = np.empty_like(image.mean)
+    less_light_free(image.mean.ravel(), base.ravel(), unlit.ravel(), share, values.ravel())
     uncertainty = _standard_error(image)
+    middle = _median(values)
     if middle > 0:
-        values /= middle
-        uncertainty /= middle
+        divided(values.ravel(), uncertainty.ravel(), middle)
     return Master(
         kind="flat",
         values=values,
@@ -91,7 +110,8 @@ def _light(image: StackImage, reduced: Reduced) -> float:
 
 def _standard_error(image: StackImage) -> NDArray[np.float32]:
     """Standard uncertainty of the stack's mean from the scatter of its samples (GUM type A)."""
-    error: NDArray[np.float32] = np.sqrt(image.variance / image.count, dtype=np.float32)
+    error = np.empty_like(image.variance)
+    standard_errors(image.variance.ravel(), image.count.ravel(), error.ravel())
     return error
 
 

@@ -116,7 +116,7 @@ class FrameLevels:
 
 @dataclass(frozen=True, slots=True)
 class Trails:
-    """Mean edge profiles of one flat stack and output, for charge transfer [DN].
+    """Mean edge profiles of one bias or flat stack and output, for charge transfer [DN].
 
     ``serial`` (K + V,) runs along the readout direction across the last K image columns and the
     V overscan columns, averaged over rows; ``parallel`` likewise over rows, empty without a

@@ -132,7 +132,7 @@ def _reduce_stack(
     profiles = {
         output.name: (columns, np.empty((output.image.shape[0], len(columns)), np.float32))
         for output in geometry.outputs
-        if stack.kind == "flat" and len(columns := edge_columns(output))
+        if stack.kind in ("bias", "flat") and len(columns := edge_columns(output))
     }
     scale = {output.name: _scale(looked, output, noise, geometry) for output in geometry.outputs}
     scatter = 1.0
