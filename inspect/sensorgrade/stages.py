@@ -13,6 +13,7 @@ from sensorgrade.measure import (
     crosstalk,
     dark_current,
     dark_uniformity,
+    extended_pixel_edge,
     lag,
     linearity,
     photon_transfer,
@@ -39,6 +40,7 @@ MEASURING: tuple[Stage, ...] = (
     dark_current.STAGE,
     dark_uniformity.STAGE,
     response_uniformity.STAGE,
+    extended_pixel_edge.STAGE,
     lag.STAGE,
     crosstalk.STAGE,
 )

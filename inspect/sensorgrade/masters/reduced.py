@@ -119,8 +119,8 @@ class Trails:
     """Mean edge profiles of one bias or flat stack and output, for charge transfer [DN].
 
     ``serial`` (K + V,) runs along the readout direction across the last K image columns and the
-    V overscan columns, averaged over rows; ``parallel`` likewise over rows, empty without a
-    parallel overscan. Bias (mean of the far half of the overscan) is subtracted.
+    V overscan columns, averaged over rows; ``parallel`` likewise over rows; each is empty without
+    its overscan. Bias (mean of the far half of the overscan) is subtracted.
     ``serial_uncertainty``, ``parallel_uncertainty`` are standard errors from the scatter.
     """
 

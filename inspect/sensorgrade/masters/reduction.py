@@ -130,9 +130,12 @@ def _reduce_stack(
         if paired
     )
     profiles = {
-        output.name: (columns, np.empty((output.image.shape[0], len(columns)), np.float32))
+        output.name: (
+            columns := edge_columns(output),
+            np.empty((output.image.shape[0], len(columns)), np.float32),
+        )
         for output in geometry.outputs
-        if stack.kind in ("bias", "flat") and len(columns := edge_columns(output))
+        if stack.kind in ("bias", "flat") and (output.overscan or output.parallel_overscan)
     }
     scale = {output.name: _scale(looked, output, noise, geometry) for output in geometry.outputs}
     scatter = 1.0

@@ -1,4 +1,4 @@
-"""Edge profiles of flats: what is left of the image's charge in the overscan."""
+"""Edge profiles: what flats leave of their charge in the overscan, and biases without any."""
 
 import numpy as np
 from numpy.typing import NDArray
@@ -38,13 +38,14 @@ def edge_rows(output: Output) -> NDArray[np.int64]:
 def edge_trails(
     stack: Stack, output: Output, profile: NDArray[np.float32], sources: dict[str, OpenStack]
 ) -> Trails:
-    """Mean edge profiles of one flat stack and output.
+    """Mean edge profiles of one bias or flat stack and output.
 
     profile : (M, K) float32 [DN], the columns of `edge_columns` for each row, mean over frames
     """
-    serial, serial_error = _mean_profile(profile)
+    serial = serial_error = parallel = parallel_error = np.empty(0)
+    if profile.size:
+        serial, serial_error = _mean_profile(profile)
     rows = edge_rows(output)
-    parallel = parallel_error = np.empty(0)
     if len(rows):
         samples = read_rows(sources[output.extension], rows)
         across = samples[:, :, output.image.column_start : output.image.column_stop]
