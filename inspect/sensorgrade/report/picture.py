@@ -48,7 +48,8 @@ class Coding:
     def grey(self, values: NDArray[np.floating]) -> NDArray[np.uint8]:
         """Grey levels of values of any shape, black at ``low`` and below."""
         scaled = np.nan_to_num((values - self.low) / (self.high - self.low))
-        return (np.clip(scaled, 0, 1) * 255).astype(np.uint8)
+        levels: NDArray[np.uint8] = (np.clip(scaled, 0, 1) * 255).astype(np.uint8)
+        return levels
 
 
 @dataclass(frozen=True, slots=True)

@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 
 def png(grey: NDArray[np.uint8]) -> bytes:
-    """PNG of an array of shape (M, N), first row on top (ISO/IEC 15948: grey, depth 8, filter 0)."""
+    """PNG of an array (M, N), first row on top (ISO/IEC 15948: grey, depth 8, filter 0)."""
     rows, columns = grey.shape
     lines = np.zeros((rows, columns + 1), dtype=np.uint8)
     lines[:, 1:] = grey
