@@ -22,6 +22,7 @@ from sensorgrade.measure import (
     response_uniformity,
     saturation,
     temporal_noise,
+    x_ray,
 )
 from sensorgrade.measure.stage import Stage
 from sensorgrade.recipe.vocabulary import Vocabulary
@@ -31,6 +32,7 @@ ENTRY_POINTS = "sensorgrade.stages"
 MEASURING: tuple[Stage, ...] = (
     bias_level.STAGE,
     photon_transfer.STAGE,
+    x_ray.STAGE,
     read_noise.STAGE,
     bias_drift.STAGE,
     temporal_noise.STAGE,

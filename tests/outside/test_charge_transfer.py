@@ -128,3 +128,16 @@ def test_charge_that_a_lone_packet_keeps(outside, efficiency, expected):
         found=found,
         atol=7e-7,
     )
+
+
+def test_an_x_ray_after_2000_transfers(outside):
+    packets = np.zeros((1, 2000), np.float32)
+    packets[0, -1] = 1616.0
+    outside(
+        "charge of a 1616 electron event after 2000 transfers of CTI 3e-6",
+        source="S0 (1 - CTI)^n",
+        standing="derived",
+        expected=1606.3330,
+        found=float(deferred(packets, 3e-6, axis=1)[0, -1]),
+        atol=1e-4,
+    )

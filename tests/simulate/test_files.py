@@ -181,7 +181,7 @@ def test_a_wrong_model_is_refused_with_all_its_mistakes(tmp_path, capsys):
     told = capsys.readouterr().err
     assert ended.value.code == 2
     assert 'device.rows: expected a whole number, 1 or more, found "many"' in told
-    assert "expected bias, dark or flat" in told
+    assert "expected bias, dark, flat" in told
     assert not (tmp_path / "out").exists()
 
 

@@ -58,6 +58,8 @@ STILL = Need(
     "five or more bias or dark frames taken alike",
     lambda d: max(_most(d, "bias"), _most(d, "dark")) >= 5,
 )
+X_RAY = Need("X-ray frames", lambda d: _most(d, "x-ray") >= 1)
+EDGE = Need("flat or X-ray frames", lambda d: max(_most(d, "flat"), _most(d, "x-ray")) >= 1)
 PUMP = Need("pumped frames", lambda d: _most(d, "pump") >= 1)
 
 NEEDS: dict[str, tuple[Need, ...]] = {
@@ -75,7 +77,8 @@ NEEDS: dict[str, tuple[Need, ...]] = {
     **dict.fromkeys(("hot_pixels", "warm_pixels"), (DARK, ZERO)),
     **dict.fromkeys(("dark_temperature", "doubling_step"), (DARK, TEMPERATURES)),
     **dict.fromkeys(("telegraph_pixels", "noisy_pixels"), (STILL,)),
-    **dict.fromkeys(("cti_parallel", "cti_serial"), (FLAT,)),
+    **dict.fromkeys(("cti_parallel", "cti_serial"), (EDGE,)),
+    **dict.fromkeys(("x_ray_gain", "x_ray_width", "x_ray_line_ratio"), (X_RAY,)),
     "traps": (PUMP,),
 }
 

@@ -134,6 +134,24 @@ class Trails:
 
 
 @dataclass(frozen=True, slots=True)
+class XRayEvents:
+    """What stands out in the X-ray frames of one stack and output: E events.
+
+    ``rows`` and ``columns`` (E,) int32 count from the pixel that is read first, ``frame`` (E,)
+    from the stack's first; ``islands`` (E, 3, 3) float32 [DN] are the samples about each event in
+    the same order, less everything that is there without X-rays. ``noise`` [DN] of one sample.
+    """
+
+    stack: Stack
+    output: str
+    frame: NDArray[np.int32]
+    rows: NDArray[np.int32]
+    columns: NDArray[np.int32]
+    islands: NDArray[np.float32]
+    noise: float
+
+
+@dataclass(frozen=True, slots=True)
 class Reduced:
     """The whole set of one device, reduced.
 
@@ -141,6 +159,7 @@ class Reduced:
     images: every dark stack; the flat stacks of three or more frames, or, when there is none,
     the flat stack that is best for a master. ``pairs`` holds bias and flat stacks of two or more
     frames, stack after stack, region after region. ``noise`` maps a region's scope to its model.
+    ``pumped`` holds every pumped stack, ``x_rays`` the events of every X-ray stack and output.
     """
 
     geometry: Geometry
@@ -151,3 +170,5 @@ class Reduced:
     noise: dict[str, NoiseModel]
     levels: tuple[FrameLevels, ...]
     trails: tuple[Trails, ...]
+    pumped: tuple[StackImage, ...] = ()
+    x_rays: tuple[XRayEvents, ...] = ()

@@ -32,6 +32,7 @@ from sensorgrade.masters.reduced import (
 from sensorgrade.masters.source import OpenStack, open_stack, opened_files, read_band
 from sensorgrade.masters.survey import Survey, noise_models, survey
 from sensorgrade.masters.trails import edge_columns, edge_trails
+from sensorgrade.masters.x_ray_events import x_ray_events
 from sensorgrade.recipe.model import Sensor
 
 BAND_BYTES = 1 << 22  # of raw samples, so that a band stays in the cache while it is worked on
@@ -54,7 +55,12 @@ def reduce_frames(
         A file vanished, ends too early or cannot be read.
     """
     stacks = [stack for stack in device.stacks if stack.kind in IMAGED]
-    frames = tuple(frame for stack in stacks for frame in stack.frames)
+    frames = tuple(
+        frame
+        for stack in device.stacks
+        if stack.kind in (*IMAGED, "x-ray")
+        for frame in stack.frames
+    )
     with opened_files(frames) as files:
         opened = [
             {key: open_stack(stack, key, files) for key in geometry.raw_shapes} for stack in stacks
@@ -69,16 +75,30 @@ def reduce_frames(
             _reduce_stack(sources, looked, geometry, sensor, noise, workers, image=index in images)
             for index, (sources, looked) in enumerate(zip(opened, surveys, strict=True))
         ]
-    image_of = [image for image, _, _ in done if image is not None]
+        image_of = [image for image, _, _ in done if image is not None]
+        bias = next((image for image in image_of if image.stack.kind == "bias"), None)
+        x_rays = [
+            events
+            for stack in device.stacks
+            if stack.kind == "x-ray"
+            for events in x_ray_events(
+                {key: open_stack(stack, key, files) for key in geometry.raw_shapes},
+                geometry,
+                bias,
+                noise,
+            )
+        ]
     return Reduced(
         geometry=geometry,
-        bias=next((image for image in image_of if image.stack.kind == "bias"), None),
-        darks=tuple(image for image in image_of if image.stack.kind in ("dark", "pump")),
+        bias=bias,
+        darks=tuple(image for image in image_of if image.stack.kind == "dark"),
         flats=tuple(image for image in image_of if image.stack.kind == "flat"),
         pairs=tuple(tiles for _, pairs, _ in done for tiles in pairs),
         noise=noise,
         levels=tuple(looked.levels for looked in surveys),
         trails=tuple(trail for _, _, trails in done for trail in trails),
+        pumped=tuple(image for image in image_of if image.stack.kind == "pump"),
+        x_rays=tuple(x_rays),
     )
 
 

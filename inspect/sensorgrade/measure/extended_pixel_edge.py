@@ -168,8 +168,12 @@ def charge_transfer(inputs: Inputs, options: ChargeTransferOptions) -> ChargeTra
                 findings.append(_lacking(inputs, output, direction, str(reason)))
                 continue
             curves.append(curve)
-            measurements.append(_joined(inputs, curve, excess))
-    if not measurements:
+            found = _joined(inputs, curve, excess)
+            if (known := _known(inputs, found)) is None:
+                measurements.append(found)
+            else:
+                findings.append(_beside(found, known))
+    if not curves:
         raise NotMeasured("; ".join(dict.fromkeys(finding.seen for finding in findings)))
     return ChargeTransferResult(tuple(measurements), tuple(findings), tuple(curves))
 
@@ -283,6 +287,26 @@ def _joined(inputs: Inputs, curve: TransferCurve, shared: float) -> Measurement:
     own *= _beyond_noise(squares, len(found) - 1)
     scope = f"output {curve.output}" if len(inputs.reduced.geometry.outputs) > 1 else "device"
     return Measurement(f"cti_{curve.direction}", scope, value, sqrt(own + common), "", len(found))
+
+
+def _known(inputs: Inputs, found: Measurement) -> Measurement | None:
+    """What X-rays have measured of the same; they see slow traps too, so theirs stands."""
+    try:
+        return inputs.measured(found.name, found.scope)
+    except NotMeasured:
+        return None
+
+
+def _beside(found: Measurement, known: Measurement) -> Finding:
+    return Finding(
+        severity="note",
+        where=f"charge_transfer, {found.scope}",
+        seen=(
+            f"{found.name} from overscan is {found.value:.3g}, with standard uncertainty"
+            f" {found.standard_uncertainty:.2g}; that of X-rays, {known.value:.3g}, stands"
+        ),
+        remedy="overscan sees only what is released soon; a large difference shows slow traps",
+    )
 
 
 def _lacking(inputs: Inputs, output: Output, direction: str, reason: str) -> Finding:

@@ -63,6 +63,7 @@ def simulate_device(
         for _ in range(stack.frames):
             conditions = Conditions(
                 light=stack.light * light[number] if stack.kind == "flat" else 0.0,
+                photons=stack.photons if stack.kind == "x-ray" else 0.0,
                 exposure=stack.exposure if stack.kind != "bias" else 0.0,
                 temperature=_temperature(stack, plan),
                 high=high[number],

@@ -12,6 +12,7 @@ from sensorgrade.silicon import ZERO_CELSIUS, dark_current_ratio
 from sensorgrade.simulate.maps import Image, Maps
 from sensorgrade.simulate.model import Amplifier, Events, SensorModel
 from sensorgrade.simulate.shift import deferred
+from sensorgrade.simulate.x_rays import x_ray_charge
 
 GAUSSIAN_FROM = 1000.0  # electron; above, a Poisson count is drawn as a rounded Gaussian
 Sample = TypeVar("Sample", bound=np.generic)
@@ -21,9 +22,13 @@ STEPS = 4  # deposits per pixel along a particle's track
 
 @dataclass(frozen=True, slots=True)
 class Conditions:
-    """What differs between frames: light [electron] where the lamp is brightest, times [s]."""
+    """What differs between frames: light [electron] where the lamp is brightest, times [s].
+
+    ``photons`` is the mean number of X-ray photons detected.
+    """
 
     light: float
+    photons: float
     exposure: float
     temperature: float  # degC
     high: NDArray[np.bool_]  # states of the telegraph pixels
@@ -100,6 +105,14 @@ def _collected(
         expected = model.events.rate * area * conditions.exposure / 60
         charge += _tracks(
             mean.shape, rng.poisson(expected), model.events, model.sensor.pixel_pitch, rng
+        )
+    if conditions.photons:
+        charge += x_ray_charge(
+            mean.shape,
+            rng.poisson(conditions.photons),
+            temperature=conditions.temperature,
+            cloud=model.charge_cloud / model.sensor.pixel_pitch,
+            rng=rng,
         )
     if maps.curvature is not None:
         charge *= 1 - maps.curvature * charge / maps.full_well

@@ -167,6 +167,12 @@ class SensorModel:
     full_well_spread: float = quantity(
         "%", "Standard deviation of the full well", default=0.0, minimum=0.0, maximum=20.0
     )
+    charge_cloud: float = quantity(
+        "um",
+        "Standard deviation of an X-ray's charge when it is collected; it may reach neighbours",
+        default=0.0,
+        minimum=0.0,
+    )
     variance_curvature: float = quantity(
         "1 / electron",
         "Change of variance over signal with signal, as charge repels charge; about -2e-6",

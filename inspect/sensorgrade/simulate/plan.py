@@ -10,11 +10,16 @@ from sensorgrade.options import choice, entry, number, quantity
 class StackPlan:
     """Frames taken alike."""
 
-    kind: str = choice("Kind of frame", "bias", "dark", "flat")
+    kind: str = choice("Kind of frame", "bias", "dark", "flat", "x-ray")
     frames: int = number("How many", default=2, minimum=1)
     exposure: float = quantity("s", "Exposure time", default=0.0, minimum=0.0)
     light: float = quantity(
         "electron", "Mean charge from light where the lamp is brightest", default=0.0, minimum=0.0
+    )
+    photons: float = number(
+        "x-ray: mean number of photons of manganese (Fe-55 source) that a frame detects",
+        default=0.0,
+        minimum=0.0,
     )
     temperature: float | None = quantity(
         "deg_C", "Sensor temperature; omit for the plan's", default=None, minimum=-200.0
