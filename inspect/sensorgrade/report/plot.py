@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Axis:
-    """One axis; ``label`` ends with the unit in brackets, ``low`` and ``high`` None: by the data."""
+    """One axis; ``label`` ends with the unit in brackets. ``low``, ``high`` None: by the data."""
 
     label: str
     log: bool = False
