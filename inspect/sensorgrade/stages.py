@@ -66,7 +66,8 @@ def vocabulary() -> Vocabulary:
         for count in finder.counts:
             sources[count.name] = (*sources.get(count.name, ()), finder.name)
     return Vocabulary(
-        stages={stage.name: stage.options for stage in (*measuring, *FINDERS)},
+        stages={stage.name: stage.options for stage in measuring}
+        | {finder.name: finder.options for finder in FINDERS},
         quantities={quantity.name: quantity.unit for quantity in quantities},
         meanings={quantity.name: quantity.meaning for quantity in quantities}
         | {count.name: count.meaning for finder in FINDERS for count in finder.counts},

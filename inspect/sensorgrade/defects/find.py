@@ -1,0 +1,238 @@
+"""All defects of a device: what the finders found, joined so that nothing counts twice."""
+
+from collections.abc import Mapping
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from sensorgrade.defects.bits import BY_NAME
+from sensorgrade.defects.clusters import ClusterOptions, groups
+from sensorgrade.defects.defect import DEFECT, DefectCount, Defects
+from sensorgrade.defects.stage import POINT, CountName, Line
+from sensorgrade.defects.table import FINDERS
+from sensorgrade.defects.zones import in_zone, zone_names
+from sensorgrade.frames.geometry import Geometry
+from sensorgrade.measure.stage import Inputs
+from sensorgrade.measurement import Finding
+from sensorgrade.recipe.model import Zone
+
+CERTAIN = 0.5  # a candidate is a defect when it is likelier past the threshold than not
+# When one pixel stands apart in several ways, it counts as the first of these.
+RANK = ("dead", "hot", "telegraph", "dim", "bright", "noisy", "offset", "warm")
+
+
+def find_defects(inputs: Inputs, options: Mapping[str, Any], zones: Mapping[str, Zone]) -> Defects:
+    """Run the finders that ``options`` names and join what they found.
+
+    A pixel counts once, in the largest class it belongs to: line, then cluster, then point. The
+    mask has every bit that applies.
+
+    Parameters
+    ----------
+    inputs : Inputs
+        With the results of the measuring stages.
+    options : mapping
+        Finder's name to its options, only those that are to run.
+    zones : mapping
+        Zones by name; counts are also given for each of them.
+    """
+    geometry = inputs.reduced.geometry
+    mask = np.zeros(geometry.shape, np.uint16)
+    found = {
+        finder.name: finder.find(inputs, options[finder.name])
+        for finder in FINDERS
+        if finder.name in options
+    }
+    lines = [line for one in found.values() for line in one.lines]
+    points = np.concatenate([one.points for one in found.values()] or [np.empty(0, POINT)])
+    for line in lines:
+        bit = "column" if line.kind.endswith("column") else "row"
+        mask[line.row_start : line.row_stop, line.column_start : line.column_stop] |= BY_NAME[
+            bit
+        ].value
+    on_line = mask[points["row"], points["column"]] > 0
+    for kind in np.unique(points["kind"]):
+        sure = points[(points["kind"] == kind) & (points["probability"] >= CERTAIN)]
+        mask[sure["row"], sure["column"]] |= BY_NAME[str(kind)].value
+    points = _ranked(points[~on_line])
+    rows = [_line_row(line) for line in lines]
+    if "clusters" in options:
+        cluster_rows, points = _clustered(points, options["clusters"], mask)
+        rows.extend(cluster_rows)
+    rows.extend(_point_row(point) for point in points[points["probability"] >= CERTAIN])
+    table = np.array(rows, DEFECT) if rows else np.empty(0, DEFECT)
+    table["output"] = _outputs(geometry, table["row"], table["column"])
+    table["zone"] = zone_names(zones, table["row"], table["column"], geometry.shape)
+    table = table[np.lexsort((table["column"], table["row"], table["kind"]))]
+    enabled = [finder for finder in FINDERS if finder.name in found]
+    lacking = {name: why for one in found.values() for name, why in one.lacking.items()}
+    names = [count for finder in enabled for count in finder.counts if count.name not in lacking]
+    return Defects(
+        table=table,
+        mask=mask,
+        counts=tuple(_counts(names, table, points, geometry, zones)),
+        findings=tuple(_findings(lacking)),
+    )
+
+
+def _ranked(points: NDArray[np.void]) -> NDArray[np.void]:
+    """One candidate for each pixel: a sure one before a doubtful one, then by rank."""
+    rank = {kind: place for place, kind in enumerate(RANK)}
+    places = np.array([rank[str(kind)] for kind in points["kind"]], np.int64)
+    order = np.lexsort((places, points["probability"] < CERTAIN))
+    points = points[order]
+    _, first = np.unique(points[["row", "column"]], return_index=True)
+    return points[np.sort(first)]
+
+
+def _clustered(
+    points: NDArray[np.void], options: ClusterOptions, mask: NDArray[np.uint16]
+) -> tuple[list[tuple[Any, ...]], NDArray[np.void]]:
+    """Rows of the clusters, and the points that are in none."""
+    sure = np.flatnonzero(points["probability"] >= CERTAIN)
+    rows = []
+    taken = np.zeros(len(points), np.bool_)
+    for group in groups(points["row"][sure], points["column"][sure], options):
+        members = points[sure[group]]
+        taken[sure[group]] = True
+        mask[members["row"], members["column"]] |= BY_NAME["cluster"].value
+        worst = members[np.argmax(members["significance"])]
+        rows.append(
+            (
+                "cluster",
+                worst["row"],
+                worst["column"],
+                members["row"].min(),
+                members["row"].max() + 1,
+                members["column"].min(),
+                members["column"].max() + 1,
+                len(members),
+                worst["value"],
+                worst["uncertainty"],
+                worst["unit"],
+                worst["significance"],
+                float(members["probability"].min()),
+                "",
+                "",
+            )
+        )
+    return rows, points[~taken]
+
+
+def _line_row(line: Line) -> tuple[Any, ...]:
+    return (
+        line.kind,
+        line.row_start,
+        line.column_start,
+        line.row_start,
+        line.row_stop,
+        line.column_start,
+        line.column_stop,
+        (line.row_stop - line.row_start) * (line.column_stop - line.column_start),
+        line.value,
+        line.uncertainty,
+        line.unit,
+        line.significance,
+        line.probability,
+        "",
+        "",
+    )
+
+
+def _point_row(point: np.void) -> tuple[Any, ...]:
+    row, column = int(point["row"]), int(point["column"])
+    return (
+        point["kind"],
+        row,
+        column,
+        row,
+        row + 1,
+        column,
+        column + 1,
+        1,
+        point["value"],
+        point["uncertainty"],
+        point["unit"],
+        point["significance"],
+        point["probability"],
+        "",
+        "",
+    )
+
+
+def _outputs(
+    geometry: Geometry, rows: NDArray[np.int32], columns: NDArray[np.int32]
+) -> NDArray[np.str_]:
+    """Name of the output that reads each pixel."""
+    names = np.zeros(len(rows), "U32")
+    for output in geometry.outputs:
+        place = output.place
+        inside = (rows >= place.row_start) & (rows < place.row_stop)
+        inside &= (columns >= place.column_start) & (columns < place.column_stop)
+        names[inside] = output.name
+    return names
+
+
+def _counts(
+    names: list[CountName],
+    table: NDArray[np.void],
+    points: NDArray[np.void],
+    geometry: Geometry,
+    zones: Mapping[str, Zone],
+) -> list[DefectCount]:
+    """Counts for the device, each output and each zone.
+
+    The expected number is the sum of the candidates' probabilities; candidates below one half are
+    in it although they are not in the table. Its variance is the sum of p (1 - p).
+    """
+    doubtful = points[points["probability"] < CERTAIN]
+    parts: list[tuple[str, NDArray[np.bool_], NDArray[np.bool_]]] = [
+        ("device", np.ones(len(table), np.bool_), np.ones(len(doubtful), np.bool_))
+    ]
+    if len(geometry.outputs) > 1:
+        of_doubtful = _outputs(geometry, doubtful["row"], doubtful["column"])
+        parts += [
+            (f"output {one.name}", table["output"] == one.name, of_doubtful == one.name)
+            for one in geometry.outputs
+        ]
+    parts += [
+        (
+            f"zone {name}",
+            in_zone(zone, table["row"], table["column"], geometry.shape),
+            in_zone(zone, doubtful["row"], doubtful["column"], geometry.shape),
+        )
+        for name, zone in zones.items()
+    ]
+    counts = []
+    for count in names:
+        counted = np.isin(table["kind"], count.kinds)
+        maybe = np.isin(doubtful["kind"], count.kinds)
+        for scope, here, maybe_here in parts:
+            sure = table["probability"][counted & here]
+            chance = np.concatenate([sure, doubtful["probability"][maybe & maybe_here]])
+            counts.append(
+                DefectCount(
+                    kind=count.name,
+                    scope=scope,
+                    found=len(sure),
+                    expected=float(chance.sum()),
+                    standard_uncertainty=float(np.sqrt((chance * (1 - chance)).sum())),
+                )
+            )
+    return counts
+
+
+def _findings(lacking: dict[str, str]) -> list[Finding]:
+    """One finding for each sentence, with all the counts that it undecides."""
+    return [
+        Finding(
+            severity="note",
+            where="defects",
+            seen=f"not counted: {', '.join(name for name in lacking if lacking[name] == sentence)}"
+            f" ({sentence})",
+            remedy="take the frames it needs, or leave the stage out of the recipe",
+            undecides=tuple(name for name in lacking if lacking[name] == sentence),
+        )
+        for sentence in dict.fromkeys(lacking.values())
+    ]
