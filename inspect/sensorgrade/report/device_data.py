@@ -16,7 +16,7 @@ from sensorgrade.measurement import Finding
 from sensorgrade.recipe.model import Recipe
 from sensorgrade.report.bars import LIMIT_AT, BarGroup, bar_groups, closest
 from sensorgrade.report.defect_rows import DefectRows, PrintedDefect, defect_rows
-from sensorgrade.report.figures import figures
+from sensorgrade.report.figures import Figure, figure, plots
 from sensorgrade.report.marks import KindMark
 from sensorgrade.report.numbers import measurement_text, name_text, number_text, unit_text
 from sensorgrade.report.page import CAUTION, policy, static_text, told
@@ -28,18 +28,7 @@ from sensorgrade.report.picture import (
     Picture,
     picture,
 )
-from sensorgrade.report.svg import svg
 from sensorgrade.report.tiles import tiles_around
-
-
-@dataclass(frozen=True, slots=True)
-class Figure:
-    """A drawn plot with its words."""
-
-    key: str
-    title: str
-    drawing: Markup
-    caption: str
 
 
 @dataclass(frozen=True, slots=True)
@@ -126,7 +115,7 @@ def device_data(
         picture(master.values, title=f"master {master.kind}", unit=master.unit, tiles=tiles)
         for master in present
     ]
-    script = static_text("pictures.js", "defects.js")
+    script = static_text("numbers.js", "pictures.js", "defects.js")
     graded = result.graded
     provenance = result.provenance
     return DevicePage(
@@ -150,10 +139,7 @@ def device_data(
         printed_defects=rows.printed,
         defect_total=rows.total,
         defects_left_out=rows.total - len(rows.rows),
-        figures=tuple(
-            Figure(plot.key, plot.title, Markup(svg(plot)), plot.caption)
-            for plot in figures(masters=masters, stages=stages)
-        ),
+        figures=tuple(figure(plot) for plot in plots(masters=masters, stages=stages)),
         not_measured=tuple(
             (name_text(stage), sentence) for stage, sentence in result.not_measured.items()
         ),

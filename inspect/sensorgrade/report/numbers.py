@@ -86,3 +86,17 @@ def doubt_text(value: float, standard_uncertainty: float | None, unit: str) -> s
 def measurement_text(measurement: Measurement) -> str:
     """The measurement with its doubt and unit."""
     return doubt_text(measurement.value, measurement.standard_uncertainty, measurement.unit)
+
+
+def percent_text(part: int, whole: int) -> str:
+    """A share in %, rounded to a whole number only where that is no 0 and no 100.
+
+    >>> percent_text(5, 6), percent_text(9999, 10000), percent_text(0, 0)
+    ('83 %', '99.99 %', '—')
+    """
+    if not whole:
+        return "—"
+    share = 100 * part / whole
+    if 1 <= share <= 99 or part in (0, whole):
+        return f"{share:.0f} %"
+    return f"{share:.2f} %" if 0.005 <= share <= 99.995 else f"{part} of {whole}"

@@ -80,17 +80,6 @@ function cell(row, name, text = "") {
   return made;
 }
 
-// Two digits of the doubt, the value to the same place.
-function withDoubt(value, doubt) {
-  if (value === null) return "—";
-  if (!doubt) return shortNumber(value, 6);
-  const places = 1 - Math.floor(Math.log10(doubt));
-  if (places > 8 || Math.abs(value) >= 1e7) return `${shortNumber(value)} ± ${shortNumber(doubt, 2)}`;
-  const step = 10 ** -Math.min(places, 0), digits = Math.max(places, 0);
-  const text = (number) => (Math.round(number / step) * step).toFixed(digits);
-  return (places < 0 ? `${text(value)} ± ${text(doubt)}` : `${value.toFixed(digits)} ± ${doubt.toFixed(digits)}`).replace(/-/g, "−");
-}
-
 if (body) {
   for (const heading of document.querySelectorAll("#defect-table th button")) {
     heading.addEventListener("click", () => {

@@ -1,4 +1,3 @@
-"use strict";
 // The masters side by side: they move and magnify together, with the defects marked on them.
 // Rows count from the bottom; view.row, view.column is the sensor position (pixel edges at whole
 // numbers) in the middle of every pane, view.zoom the length of one pixel on the screen.
@@ -22,11 +21,8 @@ let scheduled = false;
 
 // ---- values
 
-async function unpacked(text) {
-  const bytes = Uint8Array.from(atob(text), (letter) => letter.charCodeAt(0));
-  const stream = new Blob([bytes]).stream().pipeThrough(new DecompressionStream("deflate"));
-  const planes = new Uint8Array(await new Response(stream).arrayBuffer());
-  const half = planes.length / 2;
+async function unpackedCodes(text) {
+  const planes = await unpackedBytes(text), half = planes.length / 2;
   const codes = new Uint16Array(half);
   for (let i = 0; i < half; i++) codes[i] = (planes[i] << 8) | planes[half + i];
   return codes;
@@ -63,12 +59,12 @@ async function open(pane) {
   const { picture } = pane;
   const table = greys(picture);
   const width = Math.ceil(page.columns / picture.block), height = Math.ceil(page.rows / picture.block);
-  pane.codes = await unpacked(picture.overview);
+  pane.codes = await unpackedCodes(picture.overview);
   pane.width = width;
   pane.height = height;
   pane.sheet = painted(pane.codes, width, height, table,
     (i) => (height - 1 - Math.floor(i / width)) * width + (i % width));
-  pane.tileCodes = await unpacked(picture.tiles);
+  pane.tileCodes = await unpackedCodes(picture.tiles);
   const tile = page.tile, area = tile * tile, count = pane.tileCodes.length / area;
   if (!count) return;
   const across = ATLAS_TILES * tile;
@@ -193,14 +189,6 @@ function drawPointer(context, x, y) {
 }
 
 // ---- reading and moving
-
-function shortNumber(value, digits = 5) {
-  if (value === null) return "none";
-  const size = Math.abs(value);
-  if (size !== 0 && (size < 1e-3 || size >= 1e7)) return value.toExponential(digits - 2).replace("-", "−");
-  const places = Math.max(0, digits - 1 - Math.floor(Math.log10(size || 1)));
-  return String(Number(value.toFixed(Math.min(places, 20)))).replace("-", "−");
-}
 
 function read() {
   readout.textContent = "";
