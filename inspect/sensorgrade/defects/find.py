@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 from sensorgrade.defects.bits import BY_NAME
 from sensorgrade.defects.clusters import ClusterOptions, groups
 from sensorgrade.defects.defect import DEFECT, DefectCount, Defects
-from sensorgrade.defects.stage import POINT, CountName, Line
+from sensorgrade.defects.stage import NOT_ASKED, POINT, CountName, Line
 from sensorgrade.defects.table import FINDERS
 from sensorgrade.defects.zones import in_zone, zone_names
 from sensorgrade.frames.geometry import Geometry
@@ -209,7 +209,9 @@ def _counts(
         counted = np.isin(table["kind"], count.kinds)
         maybe = np.isin(doubtful["kind"], count.kinds)
         for scope, here, maybe_here in parts:
-            sure = table["probability"][counted & here]
+            mine = table[counted & here]
+            _, first = np.unique(_place(mine), return_index=True)
+            sure = mine["probability"][first]
             chance = np.concatenate([sure, doubtful["probability"][maybe & maybe_here]])
             counts.append(
                 DefectCount(
@@ -221,6 +223,14 @@ def _counts(
                 )
             )
     return counts
+
+
+def _place(rows: NDArray[np.void]) -> NDArray[np.void]:
+    """What is counted once: a column or row of an output however many bad stretches it has."""
+    place = rows[["output", "row", "column"]].copy()
+    place["row"][np.char.endswith(rows["kind"], " column")] = 0
+    place["column"][np.char.endswith(rows["kind"], " row")] = 0
+    return place
 
 
 def _findings(lacking: dict[str, str]) -> list[Finding]:
@@ -235,4 +245,5 @@ def _findings(lacking: dict[str, str]) -> list[Finding]:
             undecides=tuple(name for name in lacking if lacking[name] == sentence),
         )
         for sentence in dict.fromkeys(lacking.values())
+        if sentence != NOT_ASKED
     ]

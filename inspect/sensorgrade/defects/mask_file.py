@@ -13,6 +13,7 @@ from sensorgrade.defects.bits import BITS
 from sensorgrade.defects.defect import DEFECT, Defects
 from sensorgrade.errors import RequestError
 
+LONGEST = 44  # characters of a card's comment beside the name of a bit
 MEANINGS = {
     "kind": "what it is",
     "row": "row of its strongest pixel, from 0",
@@ -45,10 +46,10 @@ def write_mask(path: Path, defects: Defects, *, serial: str) -> None:
     """
     image = fits.PrimaryHDU(defects.mask)
     image.header["SERIAL"] = ("".join(c if 32 <= ord(c) < 127 else "?" for c in serial)[:60], "")
-    image.header["MASKZERO"] = ("good", "a pixel of value 0 is good; bits say what is wrong")
+    image.header["MASKZERO"] = ("good", "what 0 says; bits say what is wrong")
     for bit in BITS:
         place = bit.value.bit_length() - 1
-        image.header[f"BIT{place:02d}"] = (bit.name, f"{bit.value}: {bit.meaning}"[:47])
+        image.header[f"BIT{place:02d}"] = (bit.name, f"{bit.value}: {bit.meaning}"[:LONGEST])
     columns = [
         fits.Column(name=name, format=_format(name), array=defects.table[name])
         for name in DEFECT.names or ()
@@ -60,8 +61,7 @@ def write_mask(path: Path, defects: Defects, *, serial: str) -> None:
     table = fits.BinTableHDU.from_columns(columns, name="DEFECTS")
     hdus = fits.HDUList([image, table])
     for hdu in hdus:
-        hdu.add_checksum(when="of this unit")
-        hdu.header.comments["DATASUM"] = "of its data"
+        hdu.add_checksum(when="when written")
     buffer = io.BytesIO()
     hdus.writeto(buffer)
     write_whole(path, buffer.getvalue())

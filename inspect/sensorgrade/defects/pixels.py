@@ -7,7 +7,7 @@ from numpy.typing import NDArray
 from scipy.special import gammainccinv, ndtr
 
 from sensorgrade.defects.background import background, lattice, outside
-from sensorgrade.defects.stage import POINT, CountName, DefectStage, Found
+from sensorgrade.defects.stage import NOT_ASKED, POINT, CountName, DefectStage, Found
 from sensorgrade.errors import NotMeasured
 from sensorgrade.frames.frame import Stack
 from sensorgrade.frames.geometry import Region
@@ -99,7 +99,7 @@ def pixels(inputs: Inputs, options: PixelOptions) -> Found:
         except NotMeasured as missing:
             lacking.update({name: str(missing) for name in PARTS[part]})
     if options.warm is None:
-        lacking.pop("warm_pixels", None)
+        lacking["warm_pixels"] = NOT_ASKED
     points = np.concatenate(found) if found else np.empty(0, POINT)
     return Found(points=points, lines=(), lacking=lacking)
 

@@ -24,6 +24,8 @@ POINT = np.dtype(
     ]
 )
 
+NOT_ASKED = ""  # the sentence for a count that the options did not ask for
+
 
 @dataclass(frozen=True, slots=True)
 class CountName:
