@@ -41,6 +41,7 @@ from sensorgrade.report.numbers import name_text, percent_text
 from sensorgrade.report.page import CAUTION, policy, static_text, told
 from sensorgrade.report.wafer_map import WaferDrawing, wafer_drawings
 
+ALWAYS = ("serial", "state", "reason")
 WITHOUT_GRADE = ("reject", "undecided", "ungraded", "failed")
 
 
@@ -196,7 +197,7 @@ def _interval_text(accepted: int, inspected: int) -> str:
     if not inspected:
         return "No device was inspected."
     interval = wilson(accepted, inspected)
-    low, high = (f"{100 * one:.3g}" for one in (interval.low, interval.high))
+    low, high = (f"{100 * one:.1f}" for one in (interval.low, interval.high))
     return (
         f"{accepted} of {inspected} inspected. If they stand for a process, its yield lies between"
         f" {low} and {high} % (95 % confidence)."
@@ -219,7 +220,7 @@ def _shares(lines: Sequence[DeviceLine], grades: Sequence[str]) -> tuple[Share, 
 
 
 def _yield(one: GradeYield) -> tuple[str, int, str, str]:
-    interval = f"{100 * one.wilson.low:.3g} to {100 * one.wilson.high:.3g} %"
+    interval = f"{100 * one.wilson.low:.1f} to {100 * one.wilson.high:.1f} %"
     return one.grade, one.reached, percent_text(one.reached, one.devices), interval
 
 
@@ -259,7 +260,7 @@ def _clustered(found: Clustering) -> str:
 
 
 def _columns(rows: Sequence[DeviceRow]) -> tuple[tuple[str, str], ...]:
-    """Columns of the table that hold something."""
+    """Columns that tell devices apart; the lot is among the facts on top where all share it."""
     every = (
         ("serial", "Device"),
         ("lot", "Lot"),
@@ -273,5 +274,5 @@ def _columns(rows: Sequence[DeviceRow]) -> tuple[tuple[str, str], ...]:
     return tuple(
         (key, heading)
         for key, heading in every
-        if key == "serial" or any(getattr(row, key) for row in rows)
+        if len({getattr(row, key) for row in rows}) > 1 or key in ALWAYS
     )

@@ -18,6 +18,8 @@ MOST_DOTS = 300  # dots of one place in the plot against time
 STRETCHES = 24  # medians over time are taken over so many stretches of equal numbers of devices
 FEWEST_FOR_DRIFT = 12
 SPREAD_OF_MEDIAN = 1.2533  # standard error of a normal sample's median over that of its mean
+SURELY = 3.0  # standard errors that a drift must have to be called one
+HEADROOM = 1.2  # of a histogram below the labels of its limits
 HOUR = 3600.0
 
 
@@ -42,29 +44,31 @@ def distribution(quantity: LotQuantity, grades: Sequence[Grade], *, key: str) ->
         caption += f" {beyond} lie past the ends of the axis and are counted in the outmost bins."
     if outside:
         caption += f" Off the axis: {', '.join(outside)}."
+    heights = [
+        np.histogram(np.clip(place.values[np.isfinite(place.values)], edges[0], edges[-1]), edges)[
+            0
+        ]
+        for place in places
+    ]
+    tallest = max(int(height.max()) for height in heights)
     return Plot(
         key=key,
         title="Distribution",
         caption=caption,
         alt=f"Histogram of {name_text(quantity.name)} over the lot. {caption}",
         x=Axis(label=_label(quantity), low=float(edges[0]), high=float(edges[-1])),
-        y=Axis(label="devices", low=0.0),
+        y=Axis(label="devices", low=0.0, high=tallest * HEADROOM),
         series=tuple(
             Series(
                 label=place.scope,
                 x=edges,
-                y=np.histogram(
-                    np.clip(place.values[np.isfinite(place.values)], edges[0], edges[-1]), edges
-                )[0],
+                y=height,
                 draw="steps",
                 colour=index,
             )
-            for index, place in enumerate(places)
+            for index, (place, height) in enumerate(zip(places, heights, strict=True))
         ),
-        marks=tuple(
-            Mark(label=f"{grade} {_sign(limit)} {number_text(limit.bound)}", x=limit.bound)
-            for grade, limit in limits
-        ),
+        marks=tuple(Mark(label=label, x=bound) for label, bound in _marked(limits)),
     )
 
 
@@ -86,6 +90,7 @@ def course(
     low, high = _bulk(pooled, [limit.bound for _, limit in limits])
     series: list[Series] = []
     told: list[str] = []
+    moves = False
     for index, place in enumerate(places):
         use = np.flatnonzero(known & np.isfinite(place.values))
         if not use.size:
@@ -106,12 +111,15 @@ def course(
                 )
             )
         if use.size >= FEWEST_FOR_DRIFT:
-            told.append(f"{place.scope} {_change(value, quantity.unit)}")
-    caption = (
-        f"From the first quarter of the lot to the last the median moves by {'; '.join(told)}."
-        if told
-        else "Too few devices to tell a drift from chance."
-    )
+            change, error = _change(value)
+            moves = moves or abs(change) > SURELY * error
+            where = "" if place.scope == "device" else f"{place.scope} "
+            sign = "+" if change > 0 else ""
+            told.append(f"{where}{sign}{doubt_text(change, error, quantity.unit)}")
+    caption = "Too few devices to tell a drift from chance."
+    if told:
+        caption = f"Median of the last quarter less that of the first: {'; '.join(told)}."
+        caption += "" if moves else " No drift beyond chance."
     begun = datetime.fromtimestamp(start, UTC).strftime("%Y-%m-%d %H:%M UTC")
     return Plot(
         key=key,
@@ -121,10 +129,7 @@ def course(
         x=Axis(label=f"time since {begun} [{length}]"),
         y=Axis(label=_label(quantity), low=low, high=high),
         series=tuple(series),
-        marks=tuple(
-            Mark(label=f"{grade} {_sign(limit)} {number_text(limit.bound)}", y=limit.bound)
-            for grade, limit in limits
-        ),
+        marks=tuple(Mark(label=label, y=bound) for label, bound in _marked(limits)),
     )
 
 
@@ -194,8 +199,8 @@ def _summary(values: NDArray[np.float64], quantity: LotQuantity) -> str:
     return text + "."
 
 
-def _change(values: NDArray[np.float64], unit: str) -> str:
-    """Difference of the medians of the last and the first quarter, with its standard error."""
+def _change(values: NDArray[np.float64]) -> tuple[float, float]:
+    """Difference of the medians of the last and the first quarter, and its standard error."""
     quarter = values.size // 4
     parts = values[:quarter], values[values.size - quarter :]
     errors = []
@@ -203,7 +208,7 @@ def _change(values: NDArray[np.float64], unit: str) -> str:
         lower, upper = np.percentile(part, (15.87, 84.13))
         errors.append(SPREAD_OF_MEDIAN * float(upper - lower) / 2)
     change = float(np.median(parts[1]) - np.median(parts[0]))
-    return doubt_text(change, math.hypot(*errors) / quarter**0.5, unit)
+    return change, math.hypot(*errors) / quarter**0.5
 
 
 def _label(quantity: LotQuantity) -> str:
@@ -211,5 +216,13 @@ def _label(quantity: LotQuantity) -> str:
     return f"{name_text(quantity.name)} [{unit}]" if unit else name_text(quantity.name)
 
 
-def _sign(limit: Limit) -> str:
-    return "≤" if limit.relation == "<=" else "≥"
+def _marked(limits: Iterable[tuple[str, Limit]]) -> list[tuple[str, float]]:
+    """One label for each bound, with all grades that share it."""
+    grades: dict[tuple[str, float], list[str]] = {}
+    for grade, limit in limits:
+        sign = "≤" if limit.relation == "<=" else "≥"
+        grades.setdefault((sign, limit.bound), []).append(grade)
+    return [
+        (f"{', '.join(dict.fromkeys(names))} {sign} {number_text(bound)}", bound)
+        for (sign, bound), names in grades.items()
+    ]

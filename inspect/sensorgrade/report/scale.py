@@ -42,7 +42,7 @@ class Scale:
         values = [index * step for index in range(first, last + 1)]
         largest = max((abs(value) for value in values), default=0.0)
         exponent = math.floor(math.log10(largest)) if largest else 0
-        shift = 3 * (exponent // 3) if exponent >= 5 or exponent < -3 else 0
+        shift = 3 * (exponent // 3) if exponent >= 6 or exponent < -3 else 0
         places = max(0, -math.floor(math.log10(step) + 1e-9) + shift)
         power = f"·10{str(shift).translate(SUPERSCRIPTS)}" if shift else ""
         return [

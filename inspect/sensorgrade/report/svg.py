@@ -67,13 +67,16 @@ def _panel(
         f'<text class="label" transform="translate(13 {top + height / 2:.1f}) rotate(-90)"'
         f' text-anchor="middle">{escape(axis.label)}</text>'
     )
-    for mark in marks:
-        yield from _mark(mark, x_scale, y_scale, top, height)
     for one in series:
         yield from _series(one, x_scale, y_scale, top, height)
+    for index, mark in enumerate(marks):
+        yield from _mark(mark, x_scale, y_scale, top, height, line=index % 3)
 
 
-def _mark(mark: Mark, x_scale: Scale, y_scale: Scale, top: float, height: float) -> Iterator[str]:
+def _mark(
+    mark: Mark, x_scale: Scale, y_scale: Scale, top: float, height: float, *, line: int
+) -> Iterator[str]:
+    """A mark; labels of uprights stand on three lines in turn, so that neighbours stay apart."""
     width = WIDTH - LEFT - RIGHT
     if mark.x is not None:
         place = float(x_scale.place(np.array(mark.x)))
@@ -82,7 +85,7 @@ def _mark(mark: Mark, x_scale: Scale, y_scale: Scale, top: float, height: float)
             late = place > 0.6
             yield f'<path class="mark" d="M{x:.1f} {top:g}V{top + height:g}"/>'
             yield (
-                f'<text class="marked" x="{x + (-4 if late else 4):.1f}" y="{top + 11:g}"'
+                f'<text class="marked" x="{x + (-4 if late else 4):.1f}" y="{top + 11 + 15 * line:g}"'
                 f' text-anchor="{"end" if late else "start"}">{escape(mark.label)}</text>'
             )
     if mark.y is not None:

@@ -78,7 +78,7 @@ def _head(wafer: str, text: str, rows: tuple[int, int], columns: tuple[int, int]
         for one in range(rows[0], rows[1] + 1, stride)
     ]
     return (
-        f'<svg class="wafer" viewBox="0 0 {wide:g} {high:g}" role="group"'
+        f'<svg class="wafer-map" viewBox="0 0 {wide:g} {high:g}" role="group"'
         f' aria-label="{escape(f"Wafer {wafer}: {text}. Each die is a link to its page.")}">'
         + "".join(labels)
     )

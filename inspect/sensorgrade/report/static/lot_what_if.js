@@ -29,26 +29,26 @@ function update() {
   const output = byId("move-yield");
   output.textContent = `${accepted} of ${level.devices} meet ${level.name}, ${share.toFixed(1)} % `;
   made(output, "small", "", gain ? `(${gain > 0 ? "+" : "−"}${Math.abs(gain)} against the recipe)` : "(as in the recipe)");
-  for (const limit of level.limits) drawCurve(limit, missed);
+  const open = level.limits.map((limit) => reachable(limit, missed));
+  const top = Math.max(1, ...open.map((own) => own.length));
+  level.limits.forEach((limit, index) => drawCurve(limit, open[index], top));
 }
 
-// Devices accepted against this limit, the others as they stand.
-function drawCurve(limit, missed) {
-  const values = bounds[limit.row], own = [];
-  let stops = 0;
-  for (let i = 0; i < values.length; i++) {
-    const fails = !meets(limit, values[i]);
-    if (missed[i] - (fails ? 1 : 0) === 0) own.push(values[i]);
-    if (fails) stops++;
-  }
-  own.sort((a, b) => a - b);
+// What this limit alone decides: the bounds, ascending, of devices that meet all the others.
+function reachable(limit, missed) {
+  const values = bounds[limit.row];
+  return values.filter((value, i) => missed[i] - (meets(limit, value) ? 0 : 1) === 0).sort();
+}
+
+// Devices accepted against this limit, on a scale from none to ``top``.
+function drawCurve(limit, own, top) {
   const points = [];
   let at = 0;
   for (let step = 0; step <= 200; step++) {
     const bound = limit.from + ((limit.to - limit.from) * step) / 200;
     while (at < own.length && (limit.upward ? own[at] <= bound : own[at] < bound)) at++;
     const accepted = limit.upward ? at : own.length - at;
-    points.push(`${step / 2} ${(30 - (29 * accepted) / Math.max(level.devices, 1)).toFixed(2)}`);
+    points.push(`${step / 2} ${(30 - (28 * accepted) / top).toFixed(2)}`);
   }
   const place = (value) => ((100 * (value - limit.from)) / (limit.to - limit.from)).toFixed(2);
   const { area, rim, was, now, gain, item } = limit.parts;
@@ -56,7 +56,8 @@ function drawCurve(limit, missed) {
   area.setAttribute("d", `M0 30L${points.join("L")}L100 30z`);
   was.setAttribute("d", `M${place(limit.bound)} 0V30`);
   now.setAttribute("d", `M${place(limit.now)} 0V30`);
-  gain.textContent = `${stops} miss it`;
+  const finite = own.filter(Number.isFinite).length;
+  gain.textContent = `${finite} without this limit`;
   item.classList.toggle("changed", limit.now !== limit.bound);
 }
 

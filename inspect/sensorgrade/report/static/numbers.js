@@ -10,7 +10,11 @@ async function unpackedBytes(text) {
 function shortNumber(value, digits = 5) {
   if (value === null) return "none";
   const size = Math.abs(value);
-  if (size !== 0 && (size < 1e-3 || size >= 1e7)) return value.toExponential(digits - 2).replace("-", "−");
+  if (size !== 0 && (size < 1e-3 || size >= 1e7)) {
+    const [mantissa, power] = value.toExponential(digits - 2).split("e");
+    const raised = [...power.replace("+", "")].map((letter) => "⁻⁰¹²³⁴⁵⁶⁷⁸⁹"["-0123456789".indexOf(letter)]).join("");
+    return `${Number(mantissa)} × 10${raised}`.replace("-", "−");
+  }
   const places = Math.max(0, digits - 1 - Math.floor(Math.log10(size || 1)));
   return String(Number(value.toFixed(Math.min(places, 20)))).replace("-", "−");
 }
