@@ -83,9 +83,10 @@ def _mark(
         if 0 <= place <= 1:
             x = LEFT + width * place
             late = place > 0.6
+            y = top + 11 + 15 * line
             yield f'<path class="mark" d="M{x:.1f} {top:g}V{top + height:g}"/>'
             yield (
-                f'<text class="marked" x="{x + (-4 if late else 4):.1f}" y="{top + 11 + 15 * line:g}"'
+                f'<text class="marked" x="{x + (-4 if late else 4):.1f}" y="{y:g}"'
                 f' text-anchor="{"end" if late else "start"}">{escape(mark.label)}</text>'
             )
     if mark.y is not None:
