@@ -18,6 +18,7 @@ from sensorgrade.measure import (
     linearity,
     photon_transfer,
     pickup,
+    pocket_pumping,
     read_noise,
     response_uniformity,
     saturation,
@@ -43,6 +44,7 @@ MEASURING: tuple[Stage, ...] = (
     dark_uniformity.STAGE,
     response_uniformity.STAGE,
     extended_pixel_edge.STAGE,
+    pocket_pumping.STAGE,
     lag.STAGE,
     crosstalk.STAGE,
 )

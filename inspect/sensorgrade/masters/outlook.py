@@ -79,7 +79,7 @@ NEEDS: dict[str, tuple[Need, ...]] = {
     **dict.fromkeys(("telegraph_pixels", "noisy_pixels"), (STILL,)),
     **dict.fromkeys(("cti_parallel", "cti_serial"), (EDGE,)),
     **dict.fromkeys(("x_ray_gain", "x_ray_width", "x_ray_line_ratio"), (X_RAY,)),
-    "traps": (PUMP,),
+    **dict.fromkeys(("trap_density", "traps"), (PUMP, FLAT, BIAS)),
 }
 
 

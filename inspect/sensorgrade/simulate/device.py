@@ -17,6 +17,7 @@ from sensorgrade.simulate.model import SensorModel
 from sensorgrade.simulate.plan import FramePlan, StackPlan
 from sensorgrade.simulate.truth import Truth, device_truth
 
+LIT = ("flat", "pump")  # kinds of frame that the lamp shines on
 START = 1_767_254_400.0  # 2026-01-01T08:00:00 UTC, s since 1970: when every run starts
 
 
@@ -62,7 +63,9 @@ def simulate_device(
         frames = []
         for _ in range(stack.frames):
             conditions = Conditions(
-                light=stack.light * light[number] if stack.kind == "flat" else 0.0,
+                light=stack.light * light[number] if stack.kind in LIT else 0.0,
+                cycles=stack.cycles if stack.kind == "pump" else 0,
+                phase_time=stack.phase_time,
                 photons=stack.photons if stack.kind == "x-ray" else 0.0,
                 exposure=stack.exposure if stack.kind != "bias" else 0.0,
                 temperature=_temperature(stack, plan),
@@ -163,6 +166,7 @@ def _frame(
     number: int,
     time: float,
 ) -> Frame:
+    pumped = stack.kind == "pump"
     return frame_from_array(
         raw,
         kind=stack.kind,
@@ -171,6 +175,8 @@ def _frame(
         level=level,
         wavelength=stack.wavelength,
         time=START + time,
+        cycles=stack.cycles if pumped else None,
+        phase_time=stack.phase_time if pumped else None,
         name=f"{number:04d}_{stack.kind}.fits",
     )
 
@@ -185,6 +191,8 @@ def _stack(
         temperature=_temperature(stack, plan),
         level=level,
         wavelength=stack.wavelength,
+        cycles=stack.cycles if stack.kind == "pump" else None,
+        phase_time=stack.phase_time if stack.kind == "pump" else None,
     )
 
 

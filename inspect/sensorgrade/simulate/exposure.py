@@ -11,6 +11,7 @@ from sensorgrade.recipe.model import Section
 from sensorgrade.silicon import ZERO_CELSIUS, dark_current_ratio
 from sensorgrade.simulate.maps import Image, Maps
 from sensorgrade.simulate.model import Amplifier, Events, SensorModel
+from sensorgrade.simulate.pumping import pump
 from sensorgrade.simulate.shift import deferred
 from sensorgrade.simulate.x_rays import x_ray_charge
 
@@ -24,11 +25,14 @@ STEPS = 4  # deposits per pixel along a particle's track
 class Conditions:
     """What differs between frames: light [electron] where the lamp is brightest, times [s].
 
-    ``photons`` is the mean number of X-ray photons detected.
+    ``photons`` is the mean number of X-ray photons detected; charge is pumped ``cycles`` times
+    with ``phase_time`` [us].
     """
 
     light: float
     photons: float
+    cycles: int
+    phase_time: float
     exposure: float
     temperature: float  # degC
     high: NDArray[np.bool_]  # states of the telegraph pixels
@@ -117,6 +121,15 @@ def _collected(
     if maps.curvature is not None:
         charge *= 1 - maps.curvature * charge / maps.full_well
     np.minimum(charge, maps.full_well, out=charge)
+    if conditions.cycles:
+        pump(
+            charge,
+            maps.traps,
+            cycles=conditions.cycles,
+            phase_time=conditions.phase_time,
+            kelvin=conditions.temperature + ZERO_CELSIUS,
+            rng=rng,
+        )
     return charge
 
 

@@ -21,8 +21,8 @@ def write_device(simulated: SimulatedDevice, folder: Path) -> None:
 
     Samples are 16-bit, unsigned through BZERO (FITS 4.0, 4.4.2.5). Headers say what a bench's
     would: IMAGETYP, EXPTIME [s], CCD-TEMP [degC], DATE-OBS (UTC), SERIAL, and where they are known
-    LEVEL (light), FILTER, LOT, WAFER, DIEROW and DIECOL. ``truth.json`` comes last, so
-    a folder that has it is complete.
+    LEVEL (light), FILTER, NPUMP and TPHASE [us] of pumping, LOT, WAFER, DIEROW and DIECOL.
+    ``truth.json`` comes last, so a folder that has it is complete.
 
     Raises
     ------
@@ -37,9 +37,10 @@ def write_device(simulated: SimulatedDevice, folder: Path) -> None:
 
 
 def truth_record(truth: Truth) -> dict[str, Any]:
-    """The truth in plain values: regions by scope, transfer losses, and every defect placed.
+    """The truth in plain values: regions by scope, transfer losses, defects and traps placed.
 
-    A defect's ``section`` is written the FITS way, in the assembled image.
+    A defect's ``section`` is written the FITS way, in the assembled image; a trap's ``row`` and
+    ``column`` count from 0.
     """
     return {
         "temperature": truth.temperature,
@@ -56,6 +57,7 @@ def truth_record(truth: Truth) -> dict[str, Any]:
             }
             for defect in truth.defects
         ],
+        "traps": [asdict(trap) for trap in truth.traps],
     }
 
 
@@ -71,6 +73,10 @@ def _fits(frame: Frame, device: DeviceFrames) -> bytes:
         header["LEVEL"] = (frame.level, "light in any unit in proportion to it")
     if frame.wavelength is not None:
         header["FILTER"] = (frame.wavelength, "[nm] wavelength, or filter")
+    if frame.cycles is not None:
+        header["NPUMP"] = (frame.cycles, "cycles of pumping")
+    if frame.phase_time is not None:
+        header["TPHASE"] = (frame.phase_time, "[us] dwell in one phase")
     if frame.time is not None:
         moment = datetime.fromtimestamp(frame.time, UTC)
         header["DATE-OBS"] = (

@@ -8,6 +8,7 @@ from numpy.typing import NDArray
 from sensorgrade.frames.geometry import Geometry
 from sensorgrade.simulate.model import SensorModel
 from sensorgrade.simulate.placing import PlacedDefect, placed_defects
+from sensorgrade.simulate.pumping import PlacedTrap, placed_traps
 
 CELL = {"R": "red", "G": "green", "B": "blue"}
 
@@ -51,6 +52,7 @@ class Maps:
     telegraph: Telegraph
     sound: NDArray[np.bool_]
     defects: tuple[PlacedDefect, ...]
+    traps: tuple[PlacedTrap, ...]
 
 
 def device_maps(model: SensorModel, geometry: Geometry, rng: np.random.Generator) -> Maps:
@@ -91,6 +93,7 @@ def device_maps(model: SensorModel, geometry: Geometry, rng: np.random.Generator
         telegraph=_telegraph(defects),
         sound=sound,
         defects=defects,
+        traps=placed_traps(model.traps, geometry, rng),
     )
 
 

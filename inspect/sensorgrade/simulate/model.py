@@ -151,6 +151,25 @@ class DefectModel:
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class TrapModel:
+    """Charge traps of one kind, each holding one electron at a time, at random places.
+
+    Pumping carries a trap's electrons into the neighbouring row. ``toward`` says on which side:
+    that of the register, the other, or either at random.
+    """
+
+    count: int = number("How many", default=1, minimum=1)
+    row: int | None = number("0-based row of the assembled image; else random", default=None)
+    column: int | None = number("Its column, likewise", default=None)
+    energy: float = quantity("eV", "Below the conduction band", minimum=0.01, maximum=0.6)
+    cross_section: float = quantity("cm2", "For the capture of electrons", minimum=1e-20)
+    capture: float = number(
+        "Probability of capture in one cycle of pumping", default=1.0, minimum=0.0, maximum=1.0
+    )
+    toward: str = choice("Side of pumping", "register", "away", "either", default="either")
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class SensorModel:
     """A sensor with known truth.
 
@@ -190,4 +209,5 @@ class SensorModel:
     cti_serial: float = number(
         "Fraction of charge left behind by each serial transfer", default=0.0, minimum=0.0
     )
+    traps: tuple[TrapModel, ...] = entry("Charge traps that pumping shows", default=())
     defects: tuple[DefectModel, ...] = entry("What is wrong and where", default=())

@@ -10,7 +10,7 @@ from sensorgrade.options import choice, entry, number, quantity
 class StackPlan:
     """Frames taken alike."""
 
-    kind: str = choice("Kind of frame", "bias", "dark", "flat", "x-ray")
+    kind: str = choice("Kind of frame", "bias", "dark", "flat", "x-ray", "pump")
     frames: int = number("How many", default=2, minimum=1)
     exposure: float = quantity("s", "Exposure time", default=0.0, minimum=0.0)
     light: float = quantity(
@@ -21,6 +21,8 @@ class StackPlan:
         default=0.0,
         minimum=0.0,
     )
+    cycles: int = number("pump: times that charge goes forth and back", default=0, minimum=0)
+    phase_time: float = quantity("us", "pump: dwell in one phase", default=0.0, minimum=0.0)
     temperature: float | None = quantity(
         "deg_C", "Sensor temperature; omit for the plan's", default=None, minimum=-200.0
     )

@@ -12,6 +12,7 @@ from sensorgrade.simulate.maps import Image, Maps
 from sensorgrade.simulate.model import Amplifier, SensorModel
 from sensorgrade.simulate.placing import PlacedDefect
 from sensorgrade.simulate.plan import FramePlan
+from sensorgrade.simulate.pumping import PlacedTrap
 
 
 @dataclass(frozen=True, slots=True)
@@ -48,6 +49,7 @@ class Truth:
     cti_parallel: float
     cti_serial: float
     defects: tuple[PlacedDefect, ...]
+    traps: tuple[PlacedTrap, ...]
     response: Image
     dark_current: Image
     offset: Image
@@ -83,6 +85,7 @@ def device_truth(model: SensorModel, plan: FramePlan, layout: Geometry, maps: Ma
         cti_parallel=model.cti_parallel,
         cti_serial=model.cti_serial,
         defects=maps.defects,
+        traps=maps.traps,
         response=maps.response,
         dark_current=dark,
         offset=maps.offset,
