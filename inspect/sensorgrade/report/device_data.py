@@ -139,7 +139,7 @@ def device_data(
         printed_defects=rows.printed,
         defect_total=rows.total,
         defects_left_out=rows.total - len(rows.rows),
-        figures=tuple(figure(plot) for plot in plots(masters=masters, stages=stages)),
+        figures=tuple(figure(plot) for plot in plots(stages)),
         not_measured=tuple(
             (name_text(stage), sentence) for stage, sentence in result.not_measured.items()
         ),

@@ -6,13 +6,37 @@ from typing import Any
 
 from markupsafe import Markup
 
-from sensorgrade.masters.master import Masters
 from sensorgrade.measure.stage import StageResult
+from sensorgrade.report.dark_plots import dark_current_plots, dark_uniformity_plots
+from sensorgrade.report.noise_plots import (
+    bias_drift_plots,
+    photon_transfer_plots,
+    pickup_plots,
+    temporal_noise_plots,
+)
 from sensorgrade.report.plot import Plot
+from sensorgrade.report.response_plots import (
+    linearity_plots,
+    response_uniformity_plots,
+    saturation_plots,
+)
 from sensorgrade.report.svg import svg
+from sensorgrade.report.transfer_plots import charge_transfer_plots, x_ray_plots
 
-# stage: what draws its result
-DRAWN_BY: dict[str, Callable[[Any], tuple[Plot, ...]]] = {}
+# stage: what draws its result, in the order of the page
+DRAWN_BY: dict[str, Callable[[Any], tuple[Plot, ...]]] = {
+    "photon_transfer": photon_transfer_plots,
+    "saturation": saturation_plots,
+    "linearity": linearity_plots,
+    "dark_current": dark_current_plots,
+    "temporal_noise": temporal_noise_plots,
+    "pickup": pickup_plots,
+    "charge_transfer": charge_transfer_plots,
+    "x_ray": x_ray_plots,
+    "response_uniformity": response_uniformity_plots,
+    "dark_uniformity": dark_uniformity_plots,
+    "bias_drift": bias_drift_plots,
+}
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,11 +54,8 @@ def figure(plot: Plot) -> Figure:
     return Figure(plot.key, plot.title, Markup(svg(plot)), plot.caption)
 
 
-def plots(*, masters: Masters, stages: Mapping[str, StageResult]) -> tuple[Plot, ...]:
-    """Plots of the stages that ran and have curves, then distributions of the masters."""
+def plots(stages: Mapping[str, StageResult]) -> tuple[Plot, ...]:
+    """Plots of the stages that ran and have curves."""
     return tuple(
-        plot
-        for name, result in stages.items()
-        if name in DRAWN_BY
-        for plot in DRAWN_BY[name](result)
+        plot for name, draw in DRAWN_BY.items() if name in stages for plot in draw(stages[name])
     )
