@@ -44,12 +44,7 @@ def write_mask(path: Path, defects: Defects, *, serial: str) -> None:
     OSError
         The file cannot be written; nothing is left behind.
     """
-    image = fits.PrimaryHDU(defects.mask)
-    image.header["SERIAL"] = ("".join(c if 32 <= ord(c) < 127 else "?" for c in serial)[:60], "")
-    image.header["MASKZERO"] = ("good", "what 0 says; bits say what is wrong")
-    for bit in BITS:
-        place = bit.value.bit_length() - 1
-        image.header[f"BIT{place:02d}"] = (bit.name, f"{bit.value}: {bit.meaning}"[:LONGEST])
+    image = mask_unit(defects.mask, serial=serial)
     columns = [
         fits.Column(name=name, format=_format(name), array=defects.table[name])
         for name in DEFECT.names or ()
@@ -65,6 +60,17 @@ def write_mask(path: Path, defects: Defects, *, serial: str) -> None:
     buffer = io.BytesIO()
     hdus.writeto(buffer)
     write_whole(path, buffer.getvalue())
+
+
+def mask_unit(mask: NDArray[np.uint16], *, serial: str) -> fits.PrimaryHDU:
+    """The bits (M, N) as an image whose header says what each of them means."""
+    image = fits.PrimaryHDU(mask)
+    image.header["SERIAL"] = ("".join(c if 32 <= ord(c) < 127 else "?" for c in serial)[:60], "")
+    image.header["MASKZERO"] = ("good", "what 0 says; bits say what is wrong")
+    for bit in BITS:
+        place = bit.value.bit_length() - 1
+        image.header[f"BIT{place:02d}"] = (bit.name, f"{bit.value}: {bit.meaning}"[:LONGEST])
+    return image
 
 
 def _format(name: str) -> str:
@@ -90,6 +96,11 @@ def read_mask(path: Path) -> tuple[NDArray[np.bool_], NDArray[np.uint16]]:
         raise RequestError(f"{path}: holds no image of whole numbers; give a mask.fits")
     mask = bits.astype(np.uint16)
     return mask > 0, mask
+
+
+def mask_serial(path: Path) -> str:
+    """The serial number in a mask file's header, or an empty text."""
+    return str(fits.getheader(path).get("SERIAL", ""))
 
 
 def write_defect_table(path: Path, defects: Defects) -> None:

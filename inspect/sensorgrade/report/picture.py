@@ -16,7 +16,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from sensorgrade.report.png import png
+from sensorgrade.png import png
 
 OVERVIEW = 768  # most rows or columns of an overview; smaller sensors are shown whole
 THUMBNAIL = 256  # the same for the image that stands where no script runs
