@@ -1,6 +1,7 @@
 """What an inspection prints at its end: a line for each device, then the lot."""
 
 import json
+import sys
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -19,7 +20,11 @@ DECISIONS = {
 }
 
 
-def print_lot(lines: "list[DeviceLine]", *, width: int | None = None) -> None:
+LONGEST_REASON = 400  # characters
+WIDTH = 110  # columns where the terminal does not say
+
+
+def print_lot(lines: "list[DeviceLine]") -> None:
     """One row for each device: serial, decision, grade and the weightiest reason."""
     from rich.console import Console
     from rich.table import Table
@@ -27,6 +32,7 @@ def print_lot(lines: "list[DeviceLine]", *, width: int | None = None) -> None:
 
     from sensorgrade.recipe.document import printable
 
+    width = None if sys.stdout.isatty() else WIDTH
     console = Console(width=width, highlight=False, markup=False)
     table = Table(box=None, pad_edge=False, header_style="bold")
     for title in ("device", "decision", "grade"):
@@ -37,7 +43,7 @@ def print_lot(lines: "list[DeviceLine]", *, width: int | None = None) -> None:
             Text(printable(line.serial)),
             DECISIONS[line.decision],
             Text(printable(line.grade or "-")),
-            Text(printable(line.reason or "meets every limit")),
+            Text(printable(line.reason or "meets every limit", LONGEST_REASON)),
         )
     console.print(table)
 

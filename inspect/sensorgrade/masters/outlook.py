@@ -71,7 +71,7 @@ NEEDS: dict[str, tuple[Need, ...]] = {
     "read_noise_intercept": (PAIR,),
     **dict.fromkeys(("saturation_capacity", "dynamic_range", "maximum_snr"), (PAIR, LEVELS)),
     **dict.fromkeys(("linearity_error", "linearity_departure"), (LEVELS,)),
-    **dict.fromkeys(("prnu", "prnu_rows", "prnu_columns"), (FLAT,)),
+    **dict.fromkeys(("prnu", "prnu_row", "prnu_column"), (FLAT,)),
     **dict.fromkeys(("dead_pixels", "dim_pixels", "bright_pixels"), (FLAT,)),
     **dict.fromkeys(("dark_current", "dark_current_median", "dsnu"), (DARK, ZERO, GAIN)),
     **dict.fromkeys(("hot_pixels", "warm_pixels"), (DARK, ZERO)),
@@ -79,7 +79,7 @@ NEEDS: dict[str, tuple[Need, ...]] = {
     **dict.fromkeys(("telegraph_pixels", "noisy_pixels"), (STILL,)),
     **dict.fromkeys(("cti_parallel", "cti_serial"), (EDGE,)),
     **dict.fromkeys(("x_ray_gain", "x_ray_width", "x_ray_line_ratio"), (X_RAY,)),
-    **dict.fromkeys(("trap_density", "traps"), (PUMP, FLAT, BIAS)),
+    "trap_density": (PUMP, FLAT, BIAS),
 }
 
 
