@@ -1,6 +1,6 @@
 """What a device page holds, gathered from one device's results."""
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from itertools import groupby
@@ -40,6 +40,14 @@ class MeasuredRow:
 
 
 @dataclass(frozen=True, slots=True)
+class CountRow:
+    """One kind of defect: for each part of the device the number found and the expected one."""
+
+    kind: str
+    cells: tuple[tuple[str, str], ...]
+
+
+@dataclass(frozen=True, slots=True)
 class PictureFrame:
     """What stands around a picture: title, stretch as text, alternative text, thumbnail."""
 
@@ -72,9 +80,8 @@ class DevicePage:
     pictures: tuple[PictureFrame, ...] = told("The masters that there are, as pictures.")
     no_picture: tuple[str, ...] = told("A sentence for each master that could not be made.")
     kinds: tuple[KindMark, ...] = told("The kinds of defect in the table, with their marks.")
-    counts: tuple[tuple[str, str, int, str], ...] = told(
-        "Kind, scope, number found and expected number with its doubt of every count."
-    )
+    count_scopes: tuple[str, ...] = told("The parts of the device that defects are counted in.")
+    counts: tuple[CountRow, ...] = told("The counts of each kind, part by part.")
     printed_defects: tuple[PrintedDefect, ...] = told("The first rows of the defect table.")
     defect_total: int = told("How many defects the device has.")
     defects_left_out: int = told("How many of them are in defects.ecsv only.")
@@ -96,6 +103,7 @@ VERDICTS = {
     "undecided": "Undecided",
     "ungraded": "Not graded",
 }
+LEAST_DOUBT = 0.05  # of a count; what is surer is told without it
 GRAVITY = {"error": 0, "warning": 1, "note": 2}
 
 
@@ -135,7 +143,8 @@ def device_data(
         pictures=tuple(_frame(one, master) for one, master in zip(pictures, present, strict=True)),
         no_picture=_no_picture(masters),
         kinds=rows.kinds,
-        counts=tuple(_count(one) for one in result.defects),
+        count_scopes=tuple(dict.fromkeys(one.scope for one in result.defects)),
+        counts=_counts(result.defects),
         printed_defects=rows.printed,
         defect_total=rows.total,
         defects_left_out=rows.total - len(rows.rows),
@@ -213,9 +222,27 @@ def _no_picture(masters: Masters) -> tuple[str, ...]:
     )
 
 
-def _count(count: DefectCount) -> tuple[str, str, int, str]:
-    doubt = f"{number_text(count.expected, 5)} ± {number_text(count.standard_uncertainty, 2)}"
-    return name_text(count.kind), count.scope, count.found, doubt
+def _counts(counts: Sequence[DefectCount]) -> tuple[CountRow, ...]:
+    """Counts by kind, with a cell for every part of the device that any kind is counted in."""
+    scopes = tuple(dict.fromkeys(one.scope for one in counts))
+    found = {(one.kind, one.scope): one for one in counts}
+    return tuple(
+        CountRow(
+            name_text(kind),
+            tuple(_count_cell(found.get((kind, scope))) for scope in scopes),
+        )
+        for kind in dict.fromkeys(one.kind for one in counts)
+    )
+
+
+def _count_cell(count: DefectCount | None) -> tuple[str, str]:
+    """The number found, and what the probabilities add up to where that is not the same."""
+    if count is None:
+        return "", ""
+    if count.standard_uncertainty < LEAST_DOUBT:
+        return str(count.found), ""
+    doubt = f"{number_text(count.expected, 4)} ± {number_text(count.standard_uncertainty, 2)}"
+    return str(count.found), doubt
 
 
 def _measured(result: DeviceResult) -> tuple[MeasuredRow, ...]:

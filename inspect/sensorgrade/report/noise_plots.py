@@ -107,7 +107,7 @@ def temporal_noise_plots(result: TemporalNoiseResult) -> tuple[Plot, ...]:
             title="Noise of single pixels",
             caption="Standard deviation of each pixel over the bias frames. Look for a tail or a"
             " second hump to the right: noisy and telegraph pixels."
-            f" {listed(f'{one.scope}: {one.frames} frames' for _, one in regions)}.{more}",
+            f" Frames used: {listed(f'{one.scope} {one.frames}' for _, one in regions)}.{more}",
             alt="Histogram of the pixels' noise, logarithmic.",
             x=Axis(label="noise [electron]"),
             y=Axis(label="pixels", log=True),

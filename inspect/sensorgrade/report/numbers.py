@@ -13,7 +13,7 @@ def unit_text(unit: str) -> str:
     >>> unit_text("electron / s"), unit_text("cm-2"), unit_text("DN2")
     ('electron/s', 'cm⁻²', 'DN²')
     """
-    text = unit.replace(" / ", "/").replace("**", "").replace("um", "µm")
+    text = unit.replace(" / ", "/").replace("**", "").replace("um", "µm").replace("deg_C", "°C")
     out = []
     for index, letter in enumerate(text):
         raised = letter.isdigit() or (letter == "-" and text[index + 1 : index + 2].isdigit())
@@ -32,7 +32,7 @@ def name_text(name: str) -> str:
     return " ".join(word.upper() if word in ACRONYMS else word for word in words)
 
 
-ACRONYMS = frozenset({"dsnu", "prnu", "cti", "adc", "snr", "eper", "fpr"})
+ACRONYMS = frozenset({"dsnu", "prnu", "cti", "adc", "dn", "snr", "eper", "fpr"})
 
 
 def number_text(value: float, digits: int = 4) -> str:

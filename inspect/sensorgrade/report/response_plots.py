@@ -25,8 +25,8 @@ def saturation_plots(result: SaturationResult) -> tuple[Plot, ...]:
         Plot(
             key="saturation",
             title="Saturation",
-            caption="Variance against signal on plain axes; the dotted upright is where it peaks."
-            f" {ends}. Look for a peak that comes long before the last levels.{more}",
+            caption="Variance against signal on plain axes; the dotted upright is where it peaks"
+            f" ({ends}). Look for a peak that comes long before the last levels.{more}",
             alt=f"Variance against signal up to saturation. {ends}.",
             x=Axis(label="signal above bias [DN]"),
             y=Axis(label="variance [DN²]", low=0.0),
