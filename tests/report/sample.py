@@ -182,11 +182,11 @@ def defects(shape, rng, masters, *, hot=60):
     return Defects(np.array(table, dtype=DEFECT), mask, counts, ())
 
 
-def measurements(rng, *, noise=4.4):
+def measurements(rng, *, noise=4.4, spread=1.0):
     made = []
     for output in OUTPUTS:
         scope = f"output {output}"
-        jitter = rng.normal(0, 1, 8)
+        jitter = spread * rng.normal(0, 1, 8)
         made += [
             Measurement(
                 "conversion_gain", scope, 1.52 + 0.01 * jitter[0], 0.0031, "electron / DN", 9000
@@ -197,7 +197,7 @@ def measurements(rng, *, noise=4.4):
             ),
             Measurement("prnu", scope, 0.81 + 0.02 * jitter[3], 0.012, "%", 20000),
             Measurement("dsnu", scope, 3.1 + 0.1 * jitter[4], 0.05, "electron", 20000),
-            Measurement("linearity_error", scope, 0.75 + 0.04 * jitter[5], 0.035, "%", 12),
+            Measurement("linearity_error", scope, 0.71 + 0.04 * jitter[5], 0.035, "%", 12),
             Measurement(
                 "saturation_capacity", scope, 104000 + 900 * jitter[6], 520.0, "electron", 12
             ),
@@ -269,3 +269,42 @@ def device(
 def renamed(sample, **changes):
     """The sample with some of its result's fields replaced."""
     return replace(sample, result=replace(sample.result, **changes))
+
+
+def lot(devices, *, seed=4):
+    """Results of a lot on wafers, and their recipe: worse at the rim, noise rising in time."""
+    one = device(shape=(64, 64))
+    rng = np.random.default_rng(seed)
+    places = [
+        (f"W{wafer:02}", row, column)
+        for wafer in range(devices // 97 + 1)
+        for row in range(11)
+        for column in range(11)
+        if (row - 5) ** 2 + (column - 5) ** 2 <= 30
+    ]
+    results = []
+    for index in range(devices):
+        wafer, row, column = places[index]
+        rim = ((row - 5) ** 2 + (column - 5) ** 2) / 30
+        measured = measurements(rng, noise=4.0 + 0.4 * rim + 0.3 * index / devices, spread=0.4)
+        hot = int(rng.poisson(22 + 14 * rim))
+        counts = (
+            DefectCount("hot_pixels", "device", hot, hot - 0.3, 1.5),
+            DefectCount("bad_columns", "device", int(rng.random() < 0.05), 0.0, 0.0),
+        )
+        results.append(
+            replace(
+                one.result,
+                serial=f"CX-{index:04}",
+                folder=f"CX-{index:04}",
+                wafer=wafer,
+                die_row=row,
+                die_column=column,
+                findings=(),
+                measurements=measured,
+                defects=counts,
+                graded=grade(measured, counts, (), recipe=one.recipe),
+                taken=1.7e9 + 1800 * index,
+            )
+        )
+    return results, one.recipe

@@ -2,15 +2,16 @@
 
 from collections import Counter
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
 from markupsafe import Markup
 from numpy.typing import NDArray
 
+from sensorgrade.grading.decision import Graded
 from sensorgrade.grading.interval import wilson
-from sensorgrade.grading.lot_statistics import GradeYield, lot_decision, yields
+from sensorgrade.grading.lot_statistics import lot_decision, yields
 from sensorgrade.lot.failure import Failure
 from sensorgrade.lot.result import DeviceResult
 from sensorgrade.lot.summary import DeviceLine
@@ -143,7 +144,7 @@ def lot_data(
         outcome="plain" if decision is None else decision.outcome,
         lot_sentence="" if decision is None else decision.sentence,
         shares=_shares(lines, [level.name for level in recipe.grades]),
-        grade_yields=tuple(_yield(one) for one in yields(graded, recipe=recipe)) if graded else (),
+        grade_yields=_yields(graded, recipe),
         other_recipe=sum(one.provenance.recipe_sha256 != recipe.sha256 for one in results),
         costs=grade_costs(bounds, recipe),
         limited=tuple(drawing for has_limits, drawing in figures if has_limits),
@@ -219,9 +220,19 @@ def _shares(lines: Sequence[DeviceLine], grades: Sequence[str]) -> tuple[Share, 
     )
 
 
-def _yield(one: GradeYield) -> tuple[str, int, str, str]:
-    interval = f"{100 * one.wilson.low:.1f} to {100 * one.wilson.high:.1f} %"
-    return one.grade, one.reached, percent_text(one.reached, one.devices), interval
+def _yields(graded: Sequence[Graded], recipe: Recipe) -> tuple[tuple[str, int, str, str], ...]:
+    """Yield grade by grade; a grade that this recipe does not have, of another run, is none."""
+    names = {level.name for level in recipe.grades}
+    here = [one if one.grade in names else replace(one, grade=None) for one in graded]
+    return tuple(
+        (
+            one.grade,
+            one.reached,
+            percent_text(one.reached, one.devices),
+            f"{100 * one.wilson.low:.1f} to {100 * one.wilson.high:.1f} %",
+        )
+        for one in (yields(here, recipe=recipe) if here else ())
+    )
 
 
 def _figures(
