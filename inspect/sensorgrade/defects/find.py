@@ -19,7 +19,7 @@ from sensorgrade.recipe.model import Zone
 
 CERTAIN = 0.5  # a candidate is a defect when it is likelier past the threshold than not
 # When one pixel stands apart in several ways, it counts as the first of these.
-RANK = ("dead", "hot", "telegraph", "dim", "bright", "noisy", "offset", "warm")
+RANK = ("dead", "hot", "telegraph", "dim", "bright", "noisy", "offset", "warm", "trap")
 
 
 def find_defects(inputs: Inputs, options: Mapping[str, Any], zones: Mapping[str, Zone]) -> Defects:
@@ -47,10 +47,10 @@ def find_defects(inputs: Inputs, options: Mapping[str, Any], zones: Mapping[str,
     lines = [line for one in found.values() for line in one.lines]
     points = np.concatenate([one.points for one in found.values()] or [np.empty(0, POINT)])
     for line in lines:
-        bit = "column" if line.kind.endswith("column") else "row"
-        mask[line.row_start : line.row_stop, line.column_start : line.column_stop] |= BY_NAME[
-            bit
-        ].value
+        bits = BY_NAME["column" if line.kind.endswith("column") else "row"].value
+        if line.kind.startswith("trap"):
+            bits |= BY_NAME["trap"].value
+        mask[line.row_start : line.row_stop, line.column_start : line.column_stop] |= bits
     on_line = mask[points["row"], points["column"]] > 0
     for kind in np.unique(points["kind"]):
         sure = points[(points["kind"] == kind) & (points["probability"] >= CERTAIN)]

@@ -85,11 +85,12 @@ class Trap:
 
 @dataclass(frozen=True, slots=True)
 class PocketPumpingResult:
-    """``traps`` in the order of row and column; densities as measurements."""
+    """``traps`` in the order of row and column; ``threshold`` [deviations] they are past."""
 
     measurements: tuple[Measurement, ...]
     findings: tuple[Finding, ...]
     traps: tuple[Trap, ...]
+    threshold: float
 
 
 def pocket_pumping(inputs: Inputs, options: PocketPumpingOptions) -> PocketPumpingResult:
@@ -147,7 +148,9 @@ def pocket_pumping(inputs: Inputs, options: PocketPumpingOptions) -> PocketPumpi
         traps += _traps(output, series, found, options)
         measurements.append(_density(inputs, output, found, options))
     traps.sort(key=lambda trap: (trap.row, trap.column))
-    return PocketPumpingResult(tuple(measurements), tuple(findings), tuple(traps))
+    return PocketPumpingResult(
+        tuple(measurements), tuple(findings), tuple(traps), options.threshold
+    )
 
 
 def _by_temperature(pumped: list[StackImage]) -> list[list[StackImage]]:

@@ -121,6 +121,8 @@ def _collected(
     if maps.curvature is not None:
         charge *= 1 - maps.curvature * charge / maps.full_well
     np.minimum(charge, maps.full_well, out=charge)
+    if maps.trapped is not None:
+        charge -= np.minimum(charge, np.rint(maps.trapped))
     if conditions.cycles:
         pump(
             charge,

@@ -38,8 +38,8 @@ class Maps:
     ``response`` over nominal, with colour filters and defects; ``dark`` [electron/s] at the
     reference temperature; ``offset`` [electron]; ``full_well`` [electron]; ``noise`` [electron]
     that noisy pixels add; ``curvature`` of nonlinear pixels, loss at full well; ``stuck`` the
-    code returned or -1. ``sound`` is True where no defect was put. The last four but ``sound``
-    are None when the model has no such defect.
+    code returned or -1; ``trapped`` [electron] what a trap on the pixel's way takes. ``sound`` is
+    True where no defect was put. Those that only some defects have are None without them.
     """
 
     response: Image
@@ -49,6 +49,7 @@ class Maps:
     noise: Image | None
     curvature: Image | None
     stuck: NDArray[np.int32] | None
+    trapped: Image | None
     telegraph: Telegraph
     sound: NDArray[np.bool_]
     defects: tuple[PlacedDefect, ...]
@@ -66,6 +67,7 @@ def device_maps(model: SensorModel, geometry: Geometry, rng: np.random.Generator
     noise = np.zeros(geometry.shape, np.float32)
     curvature = np.zeros(geometry.shape, np.float32)
     stuck = np.full(geometry.shape, -1, np.int32)
+    trapped = np.zeros(geometry.shape, np.float32)
     sound = np.ones(geometry.shape, dtype=bool)
     defects = placed_defects(model.defects, geometry, rng)
     for defect in defects:
@@ -79,6 +81,8 @@ def device_maps(model: SensorModel, geometry: Geometry, rng: np.random.Generator
             noise[at] = defect.value
         elif defect.kind == "stuck":
             stuck[at] = round(defect.value)
+        elif defect.kind == "trap":
+            trapped[at] += defect.value
         elif defect.kind == "nonlinear":
             curvature[at] = defect.value / 100
     kinds = {defect.kind for defect in defects}
@@ -90,6 +94,7 @@ def device_maps(model: SensorModel, geometry: Geometry, rng: np.random.Generator
         noise=noise if "noisy" in kinds else None,
         curvature=curvature if "nonlinear" in kinds else None,
         stuck=stuck if "stuck" in kinds else None,
+        trapped=trapped if "trap" in kinds else None,
         telegraph=_telegraph(defects),
         sound=sound,
         defects=defects,

@@ -96,6 +96,7 @@ DEFECT_KINDS = (
     "stuck",
     "nonlinear",
     "gain",
+    "trap",
 )
 
 
@@ -147,6 +148,13 @@ class DefectModel:
     code: float = quantity("DN", "stuck: the code it returns", default=0.0, minimum=0.0)
     curvature: float = quantity(
         "%", "nonlinear: signal lost at full well, in proportion to signal", default=0.0
+    )
+    capacity: float = quantity(
+        "electron",
+        "trap: charge that every packet loses on its way through the first row, or all of it if"
+        " it holds less; give height 0 for the rows that pass it",
+        default=0.0,
+        minimum=0.0,
     )
 
 

@@ -24,6 +24,7 @@ STRENGTH = {
     "telegraph": ("amplitude", "electron"),
     "stuck": ("code", "DN"),
     "nonlinear": ("curvature", "%"),
+    "trap": ("capacity", "electron"),
 }
 
 
