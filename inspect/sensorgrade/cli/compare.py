@@ -100,7 +100,7 @@ def _repeat(
 
 
 def _print_changes(found: "RunsCompared", every: bool) -> None:
-    from sensorgrade.grading.sentence import compact, with_doubt, wording
+    from sensorgrade.wording import doubt_text, name_text, unit_text
 
     numbers = found.numbers
     for label, serials in (("before", numbers.only_before), ("after", numbers.only_after)):
@@ -112,21 +112,21 @@ def _print_changes(found: "RunsCompared", every: bool) -> None:
     click.echo(f"{sum(c.significant for c in shown)} of {len(numbers.changes)} numbers changed")
     for change in shown:
         place = "" if change.scope == "device" else f" of {change.scope}"
-        unit = f" {compact(change.unit)}".rstrip()
+        unit = f" {unit_text(change.unit)}".rstrip()
         deviation = "" if change.deviation is None else f" ({change.deviation:+.1f} uncertainties)"
         click.echo(
-            f"  {change.serial}: {wording(change.name)}{place} {change.before:.5g} ->"
+            f"  {change.serial}: {name_text(change.name)}{place} {change.before:.5g} ->"
             f" {change.after:.5g}{unit}, by"
-            f" {with_doubt(change.difference, change.standard_uncertainty)}{unit}{deviation}"
+            f" {doubt_text(change.difference, change.standard_uncertainty, '')}{unit}{deviation}"
         )
     for one in found.defects:
         _print_defects(one, every)
     click.echo("Agreement over all devices and places")
     for name in numbers.agreements:
-        unit = f" {compact(name.unit)}".rstrip()
+        unit = f" {unit_text(name.unit)}".rstrip()
         explained = "" if name.deviation is None else f"; {name.deviation:.2f} of the stated doubt"
         click.echo(
-            f"  {wording(name.name)}: {with_doubt(name.bias, name.bias_uncertainty)}{unit} on"
+            f"  {name_text(name.name)}: {doubt_text(name.bias, name.bias_uncertainty, '')}{unit} on"
             f" average, 95 % of differences from {name.low:.3g} to {name.high:.3g}{unit}{explained}"
         )
 
@@ -153,13 +153,14 @@ def _print_defects(one: "DefectsCompared", every: bool) -> None:
 
 
 def _print_study(study: "BenchStudy") -> None:
-    from sensorgrade.grading.sentence import allowed, compact, wording
+    from sensorgrade.grading.sentence import allowed
+    from sensorgrade.wording import name_text, unit_text
 
-    unit = f" {compact(study.unit)}".rstrip()
+    unit = f" {unit_text(study.unit)}".rstrip()
     place = "" if study.scope == "device" else f" of {study.scope}"
     found = study.study
     click.echo(
-        f"{wording(study.name)}{place}, {study.devices} devices, mean {study.mean:.5g}{unit}"
+        f"{name_text(study.name)}{place}, {study.devices} devices, mean {study.mean:.5g}{unit}"
     )
     click.echo(
         f"  repeatability {found.repeatability:.3g}{unit}, between benches"

@@ -93,13 +93,14 @@ def _print_grades(regraded: "Regraded") -> None:
 
 
 def _print_costs(examined: "WhatIf", accept: int | None) -> None:
-    from sensorgrade.grading.sentence import allowed, wording
+    from sensorgrade.grading.sentence import allowed
+    from sensorgrade.wording import name_text
 
     click.echo(f"Limits of {examined.grade}, the dearest first")
     for cost in examined.costs:
         if cost.missed:
             click.echo(
-                f"  {wording(cost.limit.name)} {allowed(cost.limit)}: not met by {cost.missed},"
+                f"  {name_text(cost.limit.name)} {allowed(cost.limit)}: not met by {cost.missed},"
                 f" by {cost.alone} as the only limit, {cost.undecidable} of them without a value"
             )
     if accept is None:
@@ -113,7 +114,7 @@ def _print_costs(examined: "WhatIf", accept: int | None) -> None:
     click.echo(f"To accept {accept} devices, concede")
     for eased in examined.concessions.eased:
         bound = f"{eased.limit.relation} {eased.bound:.6g} {eased.limit.unit}".rstrip()
-        click.echo(f"  {wording(eased.limit.name)} {bound} in place of {eased.limit.bound:g}")
+        click.echo(f"  {name_text(eased.limit.name)} {bound} in place of {eased.limit.bound:g}")
     click.echo(
         f"  which accepts {examined.concessions.accepted}, gaining"
         f" {', '.join(examined.concessions.gained)}"

@@ -132,10 +132,11 @@ def _print_device(device: "ExpectedDevice") -> None:
 
 def _line(plan: "LimitPlan", given: "FrameSet", power: float) -> str:
     """One limit's plan in one paragraph."""
-    from sensorgrade.grading.sentence import allowed, compact, wording
+    from sensorgrade.grading.sentence import allowed
+    from sensorgrade.wording import name_text, unit_text
 
-    unit = f" {compact(plan.limit.unit)}".rstrip()
-    head = f"{plan.grade}: {wording(plan.limit.name)} {allowed(plan.limit)}"
+    unit = f" {unit_text(plan.limit.unit)}".rstrip()
+    head = f"{plan.grade}: {name_text(plan.limit.name)} {allowed(plan.limit)}"
     if plan.given is None and plan.enough is None:
         return f"{head}\n  {plan.note}"
     text = f"{head}\n  needs u = {plan.needed:.2g}{unit} to decide {plan.distance:.3g}{unit} inside"

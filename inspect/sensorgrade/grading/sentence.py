@@ -1,48 +1,20 @@
 """Sentences that say how a reading stands to a limit."""
 
 from functools import cache
-from math import floor, log10
 
 from sensorgrade.defects.defect import DefectCount
 from sensorgrade.grading.decision import Outcome
 from sensorgrade.grading.selection import Reading
 from sensorgrade.recipe.model import Limit
-
-ACRONYMS = frozenset({"dsnu", "prnu", "cti", "adc"})
-
-
-def with_doubt(value: float, standard_uncertainty: float) -> str:
-    """``"5.632 ± 0.081"``: two digits of the uncertainty, the value to the same place."""
-    if standard_uncertainty <= 0.0:
-        return f"{value:.6g}"
-    place = 1 - floor(log10(standard_uncertainty))
-    if place < 0:
-        return f"{round(value, place):.0f} ± {round(standard_uncertainty, place):.0f}"
-    if place > 6:
-        return f"{value:.4g} ± {standard_uncertainty:.2g}"
-    return f"{value:.{place}f} ± {standard_uncertainty:.{place}f}"
-
-
-@cache
-def wording(name: str) -> str:
-    """A recipe's name as people write it: ``read_noise`` is read noise, ``prnu`` is PRNU."""
-    words = name.split("_")
-    return " ".join(word.upper() if word in ACRONYMS else word for word in words)
+from sensorgrade.wording import doubt_text, name_text, number_text, unit_text
 
 
 @cache
 def allowed(limit: Limit) -> str:
     """``"at most 5 electron"``."""
     words = "at most" if limit.relation == "<=" else "at least"
-    unit = "" if limit.unit == "" else " " + compact(limit.unit)
-    held = "" if limit.temperature is None else f" at {limit.temperature:g} degC"
-    return f"{words} {limit.bound:g}{unit}{held}"
-
-
-@cache
-def compact(unit: str) -> str:
-    """``electron / s`` as ``electron/s``."""
-    return unit.replace(" / ", "/")
+    held = "" if limit.temperature is None else f" at {number_text(limit.temperature)} °C"
+    return f"{words} {number_text(limit.bound, 6)}{_unit(limit)}{held}"
 
 
 def standing(
@@ -57,14 +29,13 @@ def standing(
     confidence: float,
 ) -> str:
     """The reason of a decided limit: number, limit, margin and place in one sentence."""
-    unit = "" if limit.unit == "" else " " + compact(limit.unit)
     side = "inside it" if margin >= 0 else "past it"
-    distance = f"{abs(margin):.3g}{unit} {side}"
+    distance = f"{number_text(abs(margin), 3)}{_unit(limit)} {side}"
     if margin == 0:
         distance = "exactly on it"
     if reading.standard_uncertainty > 0:
         distance += f" ({abs(margin) / reading.standard_uncertainty:.1f} standard uncertainties)"
-    text = f"{_subject(reading, limit, unit)}; {grade} allows {allowed(limit)}: {distance}"
+    text = f"{_subject(reading, limit)}; {grade} allows {allowed(limit)}: {distance}"
     return text + _ruling(outcome, margin, probability, rule, confidence) + "."
 
 
@@ -73,26 +44,30 @@ def missing(limit: Limit, *, grade: str, scope: str, why: str) -> str:
     return f"{_place(limit.name, scope)}: {why}; {grade} allows {allowed(limit)}."
 
 
-def _subject(reading: Reading, limit: Limit, unit: str) -> str:
+def _subject(reading: Reading, limit: Limit) -> str:
     doubt = reading.standard_uncertainty
     named = _place(limit.name, reading.scope)
     if isinstance(reading, DefectCount):
         return (
-            f"{named}: {reading.found} found ({with_doubt(reading.expected, doubt)} by their"
+            f"{named}: {reading.found} found ({doubt_text(reading.expected, doubt, '')} by their"
             " probabilities)"
         )
-    held = "" if limit.temperature is None else f", taken to {limit.temperature:g} degC,"
-    return f"{named}{held} is {with_doubt(reading.value, doubt)}{unit}"
+    held = "" if limit.temperature is None else f", taken to {number_text(limit.temperature)} °C,"
+    return f"{named}{held} is {doubt_text(reading.value, doubt, limit.unit)}"
 
 
 @cache
 def _place(name: str, scope: str) -> str:
     """The quantity and where: ``Read noise of output left``."""
-    words = wording(name)
+    words = name_text(name)
     words = words[0].upper() + words[1:]
     if scope == "device":
         return words
     return f"{words}, {scope}," if scope.startswith("mean of ") else f"{words} of {scope}"
+
+
+def _unit(limit: Limit) -> str:
+    return f" {unit_text(limit.unit)}" if limit.unit else ""
 
 
 def _ruling(

@@ -4,7 +4,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 from sensorgrade.grading.decision import Graded, LimitResult
-from sensorgrade.report.numbers import doubt_text, name_text, number_text, unit_text
+from sensorgrade.wording import doubt_text, name_text, number_text, unit_text
 
 # The bar runs from a margin of 100 % of the limit (left) over the limit to 50 % past it.
 LEFT_MARGIN, RIGHT_MARGIN = 1.0, -0.5

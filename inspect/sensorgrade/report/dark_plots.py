@@ -6,9 +6,9 @@ from numpy.typing import NDArray
 from sensorgrade.measure.dark_current import DarkCurrentResult, RegionDarkCurrent
 from sensorgrade.measure.dark_uniformity import DarkUniformityResult
 from sensorgrade.report.noise_plots import drawn_regions, listed
-from sensorgrade.report.numbers import doubt_text, number_text
 from sensorgrade.report.plot import Axis, Plot, Series
 from sensorgrade.report.response_plots import profile_plots
+from sensorgrade.wording import doubt_text, number_text
 
 LEAST_SHOWN = 0.3  # pixels in a bin, below which the bulk's curve is not drawn
 

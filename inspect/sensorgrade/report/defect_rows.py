@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from sensorgrade.defects.defect import Defects
 from sensorgrade.report.marks import KindMark, kind_marks
-from sensorgrade.report.numbers import doubt_text, name_text, number_text
+from sensorgrade.wording import doubt_text, name_text, number_text
 
 MOST_ROWS = 3000
 PRINTED_ROWS = 30  # rows that stand in the page before its script runs, and on paper

@@ -18,7 +18,6 @@ from sensorgrade.report.bars import LIMIT_AT, BarGroup, bar_groups, closest
 from sensorgrade.report.defect_rows import DefectRows, PrintedDefect, defect_rows
 from sensorgrade.report.figures import Figure, figure, plots
 from sensorgrade.report.marks import KindMark
-from sensorgrade.report.numbers import measurement_text, name_text, number_text, unit_text
 from sensorgrade.report.page import CAUTION, policy, static_text, told
 from sensorgrade.report.picture import (
     CENTRE,
@@ -29,6 +28,7 @@ from sensorgrade.report.picture import (
     picture,
 )
 from sensorgrade.report.tiles import tiles_around
+from sensorgrade.wording import doubt_text, name_text, number_text, unit_text
 
 
 @dataclass(frozen=True, slots=True)
@@ -251,7 +251,11 @@ def _measured(result: DeviceResult) -> tuple[MeasuredRow, ...]:
     ordered = sorted(result.measurements, key=lambda one: order[one.name])
     return tuple(
         MeasuredRow(
-            name_text(name), tuple((one.scope, measurement_text(one), one.n) for one in group)
+            name_text(name),
+            tuple(
+                (one.scope, doubt_text(one.value, one.standard_uncertainty, one.unit), one.n)
+                for one in group
+            ),
         )
         for name, group in groupby(ordered, key=lambda one: one.name)
     )

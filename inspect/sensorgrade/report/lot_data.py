@@ -38,9 +38,9 @@ from sensorgrade.report.lot_rows import (
     time_text,
 )
 from sensorgrade.report.lot_values import LotQuantity, lot_quantities
-from sensorgrade.report.numbers import name_text, percent_text
 from sensorgrade.report.page import CAUTION, policy, static_text, told
 from sensorgrade.report.wafer_map import WaferDrawing, wafer_drawings
+from sensorgrade.wording import name_text, percent_text
 
 ALWAYS = ("serial", "state", "reason")
 WITHOUT_GRADE = ("reject", "undecided", "ungraded", "failed")

@@ -10,8 +10,8 @@ from sensorgrade.grading.held import DeviceReadings
 from sensorgrade.grading.what_if import Tightest, costs, tightest
 from sensorgrade.lot.result import DeviceResult
 from sensorgrade.recipe.model import Limit, Recipe
-from sensorgrade.report.numbers import name_text, number_text, unit_text
 from sensorgrade.report.packing import packed_numbers
+from sensorgrade.wording import name_text, number_text, unit_text
 
 
 @dataclass(frozen=True, slots=True)

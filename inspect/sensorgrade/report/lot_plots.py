@@ -9,8 +9,8 @@ from numpy.typing import NDArray
 
 from sensorgrade.recipe.model import Grade, Limit
 from sensorgrade.report.lot_values import LotQuantity, Place
-from sensorgrade.report.numbers import doubt_text, name_text, number_text, unit_text
 from sensorgrade.report.plot import Axis, Mark, Plot, Series
+from sensorgrade.wording import doubt_text, name_text, number_text, unit_text
 
 MOST_BINS = 40
 APART = 6  # places that are drawn apart; more are drawn as one

@@ -12,8 +12,8 @@ from sensorgrade.lot.failure import Failure
 from sensorgrade.lot.result import DeviceResult
 from sensorgrade.lot.summary import DeviceLine
 from sensorgrade.report.lot_values import LotQuantity
-from sensorgrade.report.numbers import name_text, unit_text
 from sensorgrade.report.packing import packed_numbers
+from sensorgrade.wording import name_text, unit_text
 
 PRINTED_ROWS = 40  # rows that stand in the page before its script runs, and on paper
 MET = "meets every limit of this grade"

@@ -10,8 +10,8 @@ from sensorgrade.measure.bias_drift import BiasDriftResult
 from sensorgrade.measure.photon_transfer import PhotonTransferResult, RegionTransfer
 from sensorgrade.measure.pickup import PickupResult
 from sensorgrade.measure.temporal_noise import TemporalNoiseResult
-from sensorgrade.report.numbers import number_text
 from sensorgrade.report.plot import Axis, Plot, Series
+from sensorgrade.wording import number_text
 
 Region = TypeVar("Region")
 

@@ -9,8 +9,8 @@ from sensorgrade.measure.linearity import LinearityResult
 from sensorgrade.measure.response_uniformity import ResponseUniformityResult
 from sensorgrade.measure.saturation import SaturationResult
 from sensorgrade.report.noise_plots import drawn_regions, listed
-from sensorgrade.report.numbers import number_text
 from sensorgrade.report.plot import Axis, Mark, Plot, Series
+from sensorgrade.wording import number_text
 
 MOST_LINES = 1000  # rows or columns of a profile that are drawn
 

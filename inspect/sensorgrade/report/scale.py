@@ -6,8 +6,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from sensorgrade.report.numbers import SUPERSCRIPTS
 from sensorgrade.report.plot import Axis, Series
+from sensorgrade.wording import SUPERSCRIPTS
 
 
 @dataclass(frozen=True, slots=True)

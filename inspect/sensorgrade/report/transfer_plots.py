@@ -5,8 +5,8 @@ import numpy as np
 from sensorgrade.measure.extended_pixel_edge import ChargeTransferResult
 from sensorgrade.measure.x_ray import XRayResult
 from sensorgrade.report.noise_plots import drawn_regions, listed
-from sensorgrade.report.numbers import number_text
 from sensorgrade.report.plot import Axis, Plot, Series
+from sensorgrade.wording import number_text
 
 LINE_BINS = 120
 

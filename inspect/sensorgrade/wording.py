@@ -1,12 +1,12 @@
-"""Numbers as people read them: value and uncertainty to the same place, units, powers of ten."""
+"""Numbers and names as people read them: value and uncertainty to the same place, units, powers."""
 
 import math
-
-from sensorgrade.measurement import Measurement
+from functools import cache
 
 SUPERSCRIPTS = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 
 
+@cache
 def unit_text(unit: str) -> str:
     """An astropy unit string as it is printed: no space about the stroke, raised powers.
 
@@ -22,6 +22,7 @@ def unit_text(unit: str) -> str:
     return "".join(out)
 
 
+@cache
 def name_text(name: str) -> str:
     """A measurement's or count's name in words.
 
@@ -81,11 +82,6 @@ def doubt_text(value: float, standard_uncertainty: float | None, unit: str) -> s
     if shift:
         text = f"({text}) × 10{str(shift).translate(SUPERSCRIPTS)}"
     return f"{text}{tail}"
-
-
-def measurement_text(measurement: Measurement) -> str:
-    """The measurement with its doubt and unit."""
-    return doubt_text(measurement.value, measurement.standard_uncertainty, measurement.unit)
 
 
 def percent_text(part: int, whole: int) -> str:
