@@ -15,6 +15,7 @@ from sensorgrade.defects.defect import Defects
 from sensorgrade.defects.find import find_defects
 from sensorgrade.defects.mask_file import write_defect_table, write_mask
 from sensorgrade.defects.table import FINDERS
+from sensorgrade.defects.trap_file import write_trap_table
 from sensorgrade.errors import DeviceError, FrameError, NotMeasured, RequestError
 from sensorgrade.frames.decode import decoded
 from sensorgrade.frames.frame import DeviceFrames, Frame
@@ -32,6 +33,7 @@ from sensorgrade.masters.combine import combined_masters
 from sensorgrade.masters.files import write_master
 from sensorgrade.masters.master import Masters
 from sensorgrade.masters.reduction import reduce_frames
+from sensorgrade.measure.pocket_pumping import PocketPumpingResult
 from sensorgrade.measure.stage import Inputs, StageResult
 from sensorgrade.measurement import Finding
 from sensorgrade.recipe.model import Recipe
@@ -171,6 +173,9 @@ def inspect_and_write(
         ]
         write_mask(into / "mask.fits", made.defects, serial=serial)
         write_defect_table(into / "defects.ecsv", made.defects)
+        pumped = made.stages.get("pocket_pumping")
+        if isinstance(pumped, PocketPumpingResult):
+            write_trap_table(into / "traps.ecsv", pumped.traps)
         write_whole(into / "device.html", page())
         for one in written:
             one.result()

@@ -22,6 +22,7 @@ from sensorgrade.report.response_plots import (
 )
 from sensorgrade.report.svg import svg
 from sensorgrade.report.transfer_plots import charge_transfer_plots, x_ray_plots
+from sensorgrade.report.trap_plots import pocket_pumping_plots
 
 # stage: what draws its result, in the order of the page
 DRAWN_BY: dict[str, Callable[[Any], tuple[Plot, ...]]] = {
@@ -33,6 +34,7 @@ DRAWN_BY: dict[str, Callable[[Any], tuple[Plot, ...]]] = {
     "pickup": pickup_plots,
     "charge_transfer": charge_transfer_plots,
     "x_ray": x_ray_plots,
+    "pocket_pumping": pocket_pumping_plots,
     "response_uniformity": response_uniformity_plots,
     "dark_uniformity": dark_uniformity_plots,
     "bias_drift": bias_drift_plots,
