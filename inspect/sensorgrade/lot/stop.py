@@ -4,6 +4,7 @@ import signal
 import threading
 from collections.abc import Iterator
 from contextlib import contextmanager
+from multiprocessing import resource_tracker
 from types import FrameType
 
 
@@ -54,14 +55,13 @@ def stoppable() -> Iterator[Stop]:
 def uninterrupted() -> Iterator[None]:
     """Start processes that Ctrl-C never reaches, though it goes to the whole group of them.
 
-    They inherit that it is ignored, from their first instruction on. It is lost for this process
-    too while the block runs, which must be short.
+    They inherit that it is held back, from their first instruction on. For this process it waits
+    until the block has ended.
     """
-    if threading.current_thread() is not threading.main_thread():
-        yield
-        return
-    earlier = signal.signal(signal.SIGINT, signal.SIG_IGN)
+    # Python before 3.13 lets signals through again whenever it starts this helper process.
+    resource_tracker.ensure_running()
+    earlier = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
     try:
         yield
     finally:
-        signal.signal(signal.SIGINT, earlier)
+        signal.pthread_sigmask(signal.SIG_SETMASK, earlier)
