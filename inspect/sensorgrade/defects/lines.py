@@ -26,12 +26,12 @@ class LineOptions:
     """Recipe keys under ``stages: lines``."""
 
     response: float = quantity(
-        "%", "Mean departure of response from which a line is bad", default=3.0, minimum=0.0
+        "%", "Mean departure of response from which a line is bad", default=2.0, minimum=0.0
     )
     dark: float | None = quantity(
         "electron / s",
-        "Mean dark current above the local level from which a line is bad; else three times the"
-        " median",
+        "Mean dark current above the local level from which a line is bad; else twice the scatter"
+        " of single pixels",
         default=None,
         minimum=0.0,
     )
@@ -64,9 +64,10 @@ def lines(inputs: Inputs, options: LineOptions) -> Found:
     Notes
     -----
     Departures from the local median, in units of the local scatter and clipped, are summed along
-    each line; against the median of the lines around it, the stretch whose sum is largest over
-    its noise is kept for every length (a scan statistic). So a column that is 1 % low is found
-    although no pixel of it stands out. With 4096 lines and all stretches of them, sums past 7
+    each line; against the median of the lines around it, the stretch whose sum is largest over its
+    noise is kept for every length (a scan statistic); the noise includes how much lines differ from
+    each other as a whole. So a column that is 1 % low is found although no pixel of it stands out.
+    With 4096 lines and all stretches of them, sums past 7
     deviations occur by chance less than once in a thousand devices. Lines whose mean departure
     is below the threshold are sound however sure it is.
     """
@@ -117,7 +118,7 @@ def _dark(inputs: Inputs, options: LineOptions, region: Region) -> list[Line]:
     level = background(master.values, region)
     limit = options.dark
     if limit is None:
-        limit = 3 * max(float(np.median(level.middle)) * factor, 0.0)
+        limit = 2 * float(np.median(level.scatter)) * factor
     found = _stretches(master.values, level, options)
     return [
         _line(level.place, one, f"hot {one.axis}", factor, "electron / s")
@@ -166,17 +167,23 @@ def _significant(
     size = level.place.rows if axis == "column" else level.place.columns
     # What the lines around have in common is shading that the block medians do not follow.
     sums = sums - median_filter(sums, size=(1, AROUND), mode="nearest")
-    centred = sums / np.float32(max(_robust(sums), 1e-12))
+    unit = max(_robust(sums), 1e-12)
+    centred = sums / np.float32(unit)
+    bins = len(centred)
+    # Lines differ from each other by more than their pixels' scatter explains.
+    between = np.sqrt(max(_robust(centred.mean(axis=0, keepdims=True)) ** 2 - 1 / bins, 0.0))
+    own = between * unit / BIN * float(np.median(level.scatter))
     lengths = _lengths(len(centred), max(1, options.shortest // BIN))
     best = np.empty(centred.shape[1], np.float32)
     start, stop = np.empty((2, centred.shape[1]), np.int64)
     found = []
     for _ in range(MOST_TIMES):
         strongest_stretch(centred, lengths, best, start, stop)
-        hits = np.flatnonzero(np.abs(best) >= options.significance)
+        reach = options.significance * np.sqrt(1 + (stop - start) * between**2)
+        hits = np.flatnonzero(np.abs(best) >= reach)
         for index in hits:
             first, last = int(start[index]), int(stop[index])
-            made = _refined(image, level, axis, int(index), first * BIN, min(last * BIN, size))
+            made = _refined(image, level, axis, int(index), first * BIN, min(last * BIN, size), own)
             if made is not None and made.stop - made.start >= options.shortest:
                 found.append(made)
             centred[max(first - 1, 0) : last + 1, index] = 0
@@ -200,9 +207,18 @@ def _lengths(bins: int, shortest: int) -> NDArray[np.int64]:
 
 
 def _refined(
-    image: NDArray[np.float32], level: Background, axis: str, index: int, start: int, stop: int
+    image: NDArray[np.float32],
+    level: Background,
+    axis: str,
+    index: int,
+    start: int,
+    stop: int,
+    own: float,
 ) -> _Stretch | None:
-    """The stretch with its ends to the pixel, and its mean departure from the lines beside it."""
+    """The stretch with its ends to the pixel, and its mean departure from the lines beside it.
+
+    ``own`` is the scatter of the lines' means that is not their pixels'.
+    """
     place = level.place
     size = place.rows if axis == "column" else place.columns
     values = _departures(image, level, axis, index)
@@ -228,7 +244,7 @@ def _refined(
     stop = int(high[np.argmax(run[high])])
     part = values[start:stop]
     departure = float(np.median(part))
-    error = max(_spread(part), 1e-12) * np.sqrt(np.pi / 2 / len(part))
+    error = float(np.hypot(_spread(part) * np.sqrt(np.pi / 2 / len(part)), own))
     return _Stretch(axis, index, start, stop, departure, error, abs(departure) / error)
 
 

@@ -37,7 +37,7 @@ from sensorgrade.recipe.model import Sensor
 
 BAND_BYTES = 1 << 22  # of raw samples, so that a band stays in the cache while it is worked on
 SUSPECT_BYTES = 1 << 25  # of suspects' samples that are kept for one stack
-SCATTER_CHANCE = 1e-5  # of a quiet pixel scattering more than the limit
+SCATTER_CHANCE = 1e-4  # of a quiet pixel scattering more than the limit
 IMAGED = ("bias", "dark", "flat", "pump")
 
 
