@@ -67,8 +67,8 @@ def lines(inputs: Inputs, options: LineOptions) -> Found:
     each line; against the median of the lines around it, the stretch whose sum is largest over its
     noise is kept for every length (a scan statistic); the noise includes how much lines differ from
     each other as a whole. So a column that is 1 % low is found although no pixel of it stands out.
-    With 4096 lines and all stretches of them, sums past 7
-    deviations occur by chance less than once in a thousand devices. Lines whose mean departure
+    With 4096 lines and all stretches of them, sums past 7 deviations
+    occur by chance less than once in a thousand devices. Lines whose mean departure
     is below the threshold are sound however sure it is.
     """
     found: list[Line] = []
