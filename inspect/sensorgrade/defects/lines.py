@@ -3,8 +3,8 @@
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.lib.stride_tricks import sliding_window_view
 from numpy.typing import NDArray
-from scipy.ndimage import median_filter
 from scipy.special import ndtr
 
 from sensorgrade.defects.background import Background, Lattice, background
@@ -18,6 +18,7 @@ from sensorgrade.options import number, quantity
 
 CLIP = 4.0  # deviations of a pixel: one hot pixel must not make a column
 AROUND = 17  # lines whose median is taken for what a sound line sums to
+EVERY = 4  # lines that share such a median
 MOST_TIMES = 3  # a second and third stretch of the same line, after the first was taken out
 
 
@@ -166,7 +167,7 @@ def _significant(
     """The strongest stretches along one axis, ends found to the pixel."""
     size = level.place.rows if axis == "column" else level.place.columns
     # What the lines around have in common is shading that the block medians do not follow.
-    sums = sums - median_filter(sums, size=(1, AROUND), mode="nearest")
+    sums = sums - _around(sums)
     unit = max(_robust(sums), 1e-12)
     centred = sums / np.float32(unit)
     bins = len(centred)
@@ -190,6 +191,15 @@ def _significant(
         if not len(hits):
             break
     return [one for one in found if one.significance >= options.significance]
+
+
+def _around(sums: NDArray[np.float32]) -> NDArray[np.float32]:
+    """Median of each bin over the lines around, taken anew at every fourth line only."""
+    half = AROUND // 2
+    padded = np.pad(sums, ((0, 0), (half, half + EVERY)), mode="edge")
+    windows = sliding_window_view(padded, AROUND, axis=1)[:, EVERY // 2 :: EVERY]
+    middle = np.partition(windows, half, axis=2)[:, :, half]  # five times as fast as np.median
+    return np.repeat(middle, EVERY, axis=1)[:, : sums.shape[1]]
 
 
 def _robust(sums: NDArray[np.float32]) -> float:
