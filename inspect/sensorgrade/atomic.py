@@ -2,15 +2,16 @@
 
 import os
 import tempfile
+from collections.abc import Iterable
 from pathlib import Path
 
 UNFINISHED = ".unfinished-"  # how names of work in progress begin; a later run removes them
 
 
-def write_whole(path: Path, *parts: str | bytes | memoryview) -> None:
+def write_whole(path: Path, content: str | bytes | Iterable[bytes | memoryview]) -> None:
     """Write a file beside its place, have it on the disk, then give it its name.
 
-    The parts follow each other without gap.
+    Content that comes in parts follows each other without gap, and is never held as a whole.
 
     Raises
     ------
@@ -21,8 +22,10 @@ def write_whole(path: Path, *parts: str | bytes | memoryview) -> None:
     unfinished = Path(name)
     try:
         with os.fdopen(handle, "wb") as file:
-            for part in parts:
-                file.write(part.encode() if isinstance(part, str) else part)
+            if isinstance(content, str | bytes):
+                file.write(content.encode() if isinstance(content, str) else content)
+            else:
+                file.writelines(content)
             file.flush()
             os.fchmod(file.fileno(), 0o666 & ~_umask())
             os.fsync(file.fileno())

@@ -105,7 +105,7 @@ def inspect_device(
             stage("defects")
             finders = {one.name for one in FINDERS}
             wanted = {name: asked for name, asked in recipe.stages.items() if name in finders}
-            defects = find_defects(given, wanted, recipe.zones)
+            defects = find_defects(given, wanted, recipe.zones, threads=threads)
             digests = inputs.result()
     stage("grade")
     measurements = tuple(

@@ -1,6 +1,8 @@
 """All defects of a device: what the finders found, joined so that nothing counts twice."""
 
+import os
 from collections.abc import Mapping
+from concurrent.futures import ThreadPoolExecutor
 from typing import Any
 
 import numpy as np
@@ -22,7 +24,13 @@ CERTAIN = 0.5  # a candidate is a defect when it is likelier past the threshold 
 RANK = ("dead", "hot", "telegraph", "dim", "bright", "noisy", "offset", "warm", "trap")
 
 
-def find_defects(inputs: Inputs, options: Mapping[str, Any], zones: Mapping[str, Zone]) -> Defects:
+def find_defects(
+    inputs: Inputs,
+    options: Mapping[str, Any],
+    zones: Mapping[str, Zone],
+    *,
+    threads: int | None = None,
+) -> Defects:
     """Run the finders that ``options`` names and join what they found.
 
     A pixel counts once, in the largest class it belongs to: line, then cluster, then point. The
@@ -36,14 +44,15 @@ def find_defects(inputs: Inputs, options: Mapping[str, Any], zones: Mapping[str,
         Finder's name to its options, only those that are to run.
     zones : mapping
         Zones by name; counts are also given for each of them.
+    threads : int, optional
+        Cores to use, all by default; the result does not depend on it.
     """
     geometry = inputs.reduced.geometry
     mask = np.zeros(geometry.shape, np.uint16)
-    found = {
-        finder.name: finder.find(inputs, options[finder.name])
-        for finder in FINDERS
-        if finder.name in options
-    }
+    enabled = [finder for finder in FINDERS if finder.name in options]
+    with ThreadPoolExecutor(threads or os.cpu_count()) as pool:
+        sought = {one.name: pool.submit(one.find, inputs, options[one.name]) for one in enabled}
+    found = {name: one.result() for name, one in sought.items()}
     lines = [line for one in found.values() for line in one.lines]
     points = np.concatenate([one.points for one in found.values()] or [np.empty(0, POINT)])
     for line in lines:
@@ -65,7 +74,6 @@ def find_defects(inputs: Inputs, options: Mapping[str, Any], zones: Mapping[str,
     table["output"] = _outputs(geometry, table["row"], table["column"])
     table["zone"] = zone_names(zones, table["row"], table["column"], geometry.shape)
     table = table[np.lexsort((table["column"], table["row"], table["kind"]))]
-    enabled = [finder for finder in FINDERS if finder.name in found]
     lacking = {name: why for one in found.values() for name, why in one.lacking.items()}
     names = [count for finder in enabled for count in finder.counts if count.name not in lacking]
     return Defects(

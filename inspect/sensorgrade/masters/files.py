@@ -1,5 +1,7 @@
 """Master frames as FITS that general reduction software opens with no arguments."""
 
+from collections.abc import Iterator
+from itertools import chain
 from pathlib import Path
 from typing import Any
 
@@ -11,6 +13,7 @@ from sensorgrade.atomic import write_whole
 from sensorgrade.masters.master import Master
 
 BLOCK = 2880  # bytes; everything in a FITS file is padded to a multiple
+PIECE = 1 << 20  # bytes
 OFFSET = 0x30  # ASCII "0", from which the characters of a checksum are counted
 PUNCTUATION = (*range(0x3A, 0x41), *range(0x5B, 0x61))  # not allowed in a checksum
 
@@ -41,16 +44,18 @@ def write_master(path: Path, master: Master, *, serial: str) -> None:
     doubt = fits.Header({"UTYPE": "StdDevUncertainty", "BUNIT": header["BUNIT"]})
     write_whole(
         path,
-        *_unit(master.values, header, name=None),
-        *_unit(empty, fits.Header(), name="MASK"),
-        *_unit(master.uncertainty, doubt, name="UNCERT"),
+        chain(
+            _unit(master.values, header, name=None),
+            _unit(empty, fits.Header(), name="MASK"),
+            _unit(master.uncertainty, doubt, name="UNCERT"),
+        ),
     )
 
 
 def _unit(
     image: NDArray[np.float32] | NDArray[np.uint8], header: fits.Header, *, name: str | None
-) -> tuple[bytes, memoryview, bytes]:
-    """One header-data unit as header, data and padding.
+) -> Iterator[bytes | memoryview]:
+    """One header-data unit in parts: header, rows of data, padding.
 
     The sums are taken of the samples as they lie in memory, in a fraction of the time that a
     general FITS library needs for them; a test has two such libraries verify the result.
@@ -62,19 +67,20 @@ def _unit(
     cards = shaped.header
     if image.dtype == np.float32:
         total = _folded(int(image.view(np.uint32).sum(dtype=np.uint64)))
-        stored = image.astype(">f4")
     else:
         padded = np.zeros(-(-image.size // 4) * 4, np.uint8)
         padded[: image.size] = image.ravel()
         total = _folded(int(padded.view(">u4").sum(dtype=np.uint64)))
-        stored = image
     cards["CHECKSUM"] = ("0" * 16, "sum of this unit, FITS 4.0 appendix J")
     cards["DATASUM"] = (str(total), "sum of its data")
     text = cards.tostring().encode("ascii")
     whole = _folded(int(np.frombuffer(text, ">u4").sum(dtype=np.uint64)) + total)
     cards["CHECKSUM"] = checksum_text(~whole & 0xFFFFFFFF)
-    data = stored.data.cast("B")
-    return cards.tostring().encode("ascii"), data, bytes(-len(data) % BLOCK)
+    yield cards.tostring().encode("ascii")
+    # Turned to the file's byte order in pieces that stay in the cache.
+    for piece in np.array_split(image, -(-image.nbytes // PIECE)):
+        yield piece.astype(image.dtype.newbyteorder(">"), order="C").data.cast("B")
+    yield bytes(-image.nbytes % BLOCK)
 
 
 def _folded(total: int) -> int:
