@@ -85,7 +85,7 @@ def inspect_device(
             raise DeviceError(_no_frames(ready))
         shapes = {key: plane.shape for key, plane in ready.frames[0].planes.items()}
         try:
-            layout = geometry(recipe.sensor, shapes)
+            layout = geometry(recipe.sensor, shapes, ready.frames[0].sections)
         except RequestError as error:
             raise DeviceError(f"{ready.frames[0].label}: {error}") from error
         ready = audited(ready, layout, recipe.sensor)

@@ -207,6 +207,14 @@ def _outputs(bench: Bench, text: str) -> None:
     )
 
 
+def _stated(bench: Bench, section: str | None) -> None:
+    """Healthy frames that state a section, and one that states another or none."""
+    _emptied(bench)
+    for number in range(4):
+        bench.put(f"b{number}.fits", DSEC1="[1:32,1:32]")
+    bench.put("x.fits", **({} if section is None else {"DSEC1": section}))
+
+
 class Bait:
     """Would print if it were unpickled."""
 
@@ -475,6 +483,31 @@ FRAMES = [
         3,
     ),
     Case(
+        "section of the header missing",
+        lambda b: (_outputs(b, "{a: {image: header DSEC1}}"), _stated(b, None)),
+        "x.fits: its header has no DSEC1, from which the recipe takes sensor.outputs.a.image",
+    ),
+    Case(
+        "section of the header garbled",
+        lambda b: (_outputs(b, "{a: {image: header DSEC1}}"), _stated(b, "all of it")),
+        "x.fits: DSEC1 is 'all of it', from which the recipe takes sensor.outputs.a.image; write",
+    ),
+    Case(
+        "section of the header unlike the others",
+        lambda b: (_outputs(b, "{a: {image: header DSEC1}}"), _stated(b, "[1:30,1:32]")),
+        "is 32 x 32 uint16 (rows x columns), DSEC1 [1:30,1:32], the device's other frames are",
+    ),
+    Case(
+        "section of the header past the frame",
+        lambda b: (
+            _outputs(b, "{a: {image: header DSEC1}}"),
+            _emptied(b),
+            [b.put(f"c{n}.fits", DSEC1="[1:32,1:99]") for n in range(3)],
+        ),
+        "sensor.outputs.a.image: [1:32,1:99] (from DSEC1) leaves the frame, which has 32 x 32",
+        3,
+    ),
+    Case(
         "a single frame",
         lambda b: [(b.frames / f"b{n}.fits").unlink() for n in (1, 2, 3)],
         "a single bias frame shows no noise",
@@ -528,6 +561,12 @@ RECIPES = [
         "pattern that never ends",
         lambda b: b.rules('{sorted_by: name, pattern: "(?P<kind>([a-z]+)+)!"}'),
         "could take for ever",
+        2,
+    ),
+    Case(
+        "section of no keyword",
+        lambda b: _outputs(b, "{a: {image: header of the frame}}"),
+        "name one keyword of up to 8 letters and digits, as in header DSEC1",
         2,
     ),
     Case(

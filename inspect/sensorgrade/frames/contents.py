@@ -1,6 +1,6 @@
 """What a reader finds in a file without reading its samples, and how large a file may be."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 
 import numpy as np
@@ -19,11 +19,16 @@ FREE_EXPANSION = 64 << 20  # decoded bytes up to which any expansion is harmless
 
 @dataclass(frozen=True, slots=True)
 class FileContents:
-    """``values`` by upper-case keyword; ``planes`` as in Frame; ``remarks`` are worth a warning."""
+    """``values`` by upper-case keyword; ``planes`` as in Frame; ``remarks`` are worth a warning.
+
+    ``headers`` has the values of each plane's own header, by the plane's key, where a file has
+    several headers.
+    """
 
     values: dict[str, Value]
     planes: dict[str, Plane]
     remarks: tuple[str, ...] = ()
+    headers: dict[str, dict[str, Value]] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)

@@ -61,7 +61,7 @@ def guessed_extensions(
         outputs[name] = replace(only, extension=name)
         colour = guess.colour
     shapes = {
-        name: output.image.shape if output.image else _shape(means[name])
+        name: output.image.shape if isinstance(output.image, Section) else _shape(means[name])
         for name, output in outputs.items()
     }
     stated = _stated(shapes, places) or _side_by_side(shapes)

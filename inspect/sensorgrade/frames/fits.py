@@ -82,7 +82,8 @@ def _contents(
                 "BZERO is -32768, the opposite of the standard's sign for unsigned numbers;"
                 " values were taken literally and come out 65536 too low if the writer meant +32768"
             )
-    return FileContents(values, planes, tuple(remarks))
+    headers = {key: units[0].values | unit.values for key, unit in chosen.items()}
+    return FileContents(values, planes, tuple(remarks), headers)
 
 
 def _units(

@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from sensorgrade.measurement import Finding
+from sensorgrade.recipe.model import Section
 
 KINDS = ("bias", "dark", "flat", "x-ray", "pump")
 
@@ -62,6 +63,7 @@ class Frame:
     light in any proportional unit. ``wavelength`` is the text found ("550" nm or a filter name).
     ``path`` is the file as the user knows it (also when a scratch file holds the samples);
     ``label`` is that path below the source, with forward slashes, for reports and provenance.
+    ``sections`` are those that the header states for an output, by the plane's key and keyword.
     """
 
     path: Path
@@ -75,6 +77,7 @@ class Frame:
     time: float | None = None
     cycles: int | None = None
     phase_time: float | None = None
+    sections: dict[str, dict[str, Section]] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)

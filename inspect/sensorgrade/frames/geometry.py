@@ -4,10 +4,11 @@ The assembled image is what masters, masks and defects are given in: the image s
 outputs in the raw frame's own pixel order, overscan and prescan taken out.
 """
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 from sensorgrade.errors import RequestError
-from sensorgrade.recipe.model import OutputOptions, Section, Sensor
+from sensorgrade.recipe.model import HeaderSection, OutputOptions, Section, Sensor
 
 CELL = {"R": "colour red", "B": "colour blue"}
 
@@ -63,7 +64,23 @@ class Geometry:
     regions: tuple[Region, ...]
 
 
-def geometry(sensor: Sensor, raw_shapes: dict[str, tuple[int, int]]) -> Geometry:
+Stated = Mapping[str, Mapping[str, Section]]  # by the plane's key and the header's keyword
+
+
+@dataclass(frozen=True, slots=True)
+class _Placed:
+    """An output's sections in numbers, wherever they were written."""
+
+    image: Section
+    overscan: Section | None
+    parallel_overscan: Section | None
+    prescan: Section | None
+    place: Section | None
+
+
+def geometry(
+    sensor: Sensor, raw_shapes: dict[str, tuple[int, int]], stated: Stated | None = None
+) -> Geometry:
     """Lay out the outputs of ``sensor`` for frames of the shapes found.
 
     Parameters
@@ -71,6 +88,8 @@ def geometry(sensor: Sensor, raw_shapes: dict[str, tuple[int, int]]) -> Geometry
     sensor : Sensor
     raw_shapes : dict
         Plane key (``""`` for a plain frame, else the extension) to (rows, columns).
+    stated : mapping, optional
+        Sections that the frames' headers state, as in ``Frame.sections``.
 
     Raises
     ------
@@ -79,16 +98,18 @@ def geometry(sensor: Sensor, raw_shapes: dict[str, tuple[int, int]]) -> Geometry
         is missing; the message names the output and both shapes.
     """
     options = sensor.outputs or {"": OutputOptions()}
-    parts = {name: _sections(name, output, raw_shapes) for name, output in options.items()}
+    parts = {
+        name: _sections(name, output, raw_shapes, stated or {}) for name, output in options.items()
+    }
     places = _places(options, parts)
     outputs = tuple(
         Output(
             name=name,
             extension=output.extension or "",
-            image=parts[name],
-            overscan=output.overscan,
-            parallel_overscan=output.parallel_overscan,
-            prescan=output.prescan,
+            image=parts[name].image,
+            overscan=parts[name].overscan,
+            parallel_overscan=parts[name].parallel_overscan,
+            prescan=parts[name].prescan,
             place=places[name],
             corner=output.corner,
         )
@@ -110,8 +131,10 @@ def geometry(sensor: Sensor, raw_shapes: dict[str, tuple[int, int]]) -> Geometry
     return Geometry(shape=shape, raw_shapes=raw_shapes, outputs=outputs, regions=regions)
 
 
-def _sections(name: str, output: OutputOptions, raw_shapes: dict[str, tuple[int, int]]) -> Section:
-    """The output's image section, after every section was found to lie inside the frame."""
+def _sections(
+    name: str, output: OutputOptions, raw_shapes: dict[str, tuple[int, int]], stated: Stated
+) -> _Placed:
+    """The output's sections, after all but its place were found to lie inside the frame."""
     key = output.extension or ""
     if key not in raw_shapes:
         raise RequestError(
@@ -119,19 +142,38 @@ def _sections(name: str, output: OutputOptions, raw_shapes: dict[str, tuple[int,
             f" they have {', '.join(map(repr, raw_shapes))}"
         )
     rows, columns = raw_shapes[key]
-    for label in ("image", "overscan", "parallel_overscan", "prescan"):
-        section: Section | None = getattr(output, label)
-        if section is not None and (section.row_stop > rows or section.column_stop > columns):
+    found: dict[str, Section | None] = {}
+    for label in ("image", "overscan", "parallel_overscan", "prescan", "place"):
+        section: Section | HeaderSection | None = getattr(output, label)
+        source = ""
+        if isinstance(section, HeaderSection):
+            source = f" (from {section.keyword})"
+            section = _stated(section, stated.get(key, {}), f"sensor.outputs.{name}.{label}")
+        found[label] = section
+        if section is None or label == "place":
+            continue
+        if section.row_stop > rows or section.column_stop > columns:
             raise RequestError(
-                f"sensor.outputs.{name}.{label}: {fits_section(section)} leaves the frame, which"
-                f" has {columns} x {rows} pixels (x by y)"
+                f"sensor.outputs.{name}.{label}: {fits_section(section)}{source} leaves the frame,"
+                f" which has {columns} x {rows} pixels (x by y)"
             )
-    return output.image or Section(0, rows, 0, columns)
+    image = found.pop("image") or Section(0, rows, 0, columns)
+    return _Placed(image, **found)
 
 
-def _places(options: dict[str, OutputOptions], parts: dict[str, Section]) -> dict[str, Section]:
+def _stated(wanted: HeaderSection, stated: Mapping[str, Section], where: str) -> Section:
+    if wanted.keyword not in stated:
+        raise RequestError(
+            f"{where}: is to be read from header {wanted.keyword}, and there are no headers here;"
+            " write the section itself"
+        )
+    return stated[wanted.keyword]
+
+
+def _places(options: dict[str, OutputOptions], placed: dict[str, _Placed]) -> dict[str, Section]:
     """Where each image section goes: as given, else in the raw frame's order without gaps."""
-    given = {name: output.place for name, output in options.items() if output.place is not None}
+    parts = {name: one.image for name, one in placed.items()}
+    given = {name: one.place for name, one in placed.items() if one.place is not None}
     if len(given) == len(options):
         for name, place in given.items():
             if place.shape != parts[name].shape:

@@ -23,9 +23,10 @@ from sensorgrade.frames.sources import (
     shown,
 )
 from sensorgrade.frames.stacks import stacks
+from sensorgrade.frames.stated_sections import stated_sections
 from sensorgrade.measurement import Finding
 from sensorgrade.recipe.document import printable
-from sensorgrade.recipe.model import FrameRules, Recipe
+from sensorgrade.recipe.model import Recipe
 
 FEW = 3  # findings alike that are listed one by one
 
@@ -116,26 +117,29 @@ def _gathered(sources: tuple[Path, ...], recipe: Recipe) -> dict[Path, Folder]:
                 given = name_groups(pattern, found)
             else:
                 given = manifests.row(found)
-            folder.found.append(_identified(found, layout, given, rules))
+            folder.found.append(_identified(found, layout, given, recipe))
         for finding in manifests.left_over():
             folders.setdefault(source, Folder(source)).findings.append(finding)
     return folders
 
 
 def _identified(
-    file: FoundFile, layout: Layout, given: dict[str, Value] | None, rules: FrameRules
+    file: FoundFile, layout: Layout, given: dict[str, Value] | None, recipe: Recipe
 ) -> Identity:
     reader = reader_of(file.path.name)
     assert reader is not None  # files_below yields no other files
     try:
         contents = reader(file.path, layout)
+        sections = stated_sections(file.path, recipe.sensor.outputs, contents)
     except FrameError as error:
         seen = printable(str(error).removeprefix(f"{file.path}: "), 500)
         return Identity(file, None, odd=((seen, "it was left out"),))
     except OSError as error:
         seen = f"cannot be read: {(error.strerror or 'unknown reason').lower()}; it was left out"
         return Identity(file, None, odd=((seen, "make it readable"),))
-    found = identity(file, contents.values, contents.planes, given, rules)
+    found = identity(file, contents.values, contents.planes, given, recipe.frames)
+    if sections and found.frame is not None:
+        found = replace(found, frame=replace(found.frame, sections=sections))
     if contents.remarks and found.frame is not None:
         extra = tuple((remark, "correct the header") for remark in contents.remarks)
         return replace(found, odd=found.odd + extra)

@@ -5,11 +5,12 @@ from collections.abc import Callable, Iterable
 from statistics import fmean
 
 from sensorgrade.frames.frame import KINDS, Frame, Stack
+from sensorgrade.frames.geometry import fits_section
 from sensorgrade.frames.sources import natural
 from sensorgrade.measurement import Finding
-from sensorgrade.recipe.model import FrameRules
+from sensorgrade.recipe.model import FrameRules, Section
 
-Form = tuple[tuple[str, tuple[int, int], str], ...]
+Form = tuple[tuple[str, tuple[int, int], str, tuple[tuple[str, Section], ...]], ...]
 
 
 def stacks(
@@ -20,8 +21,8 @@ def stacks(
     Exposures and levels are alike within ``rules.exposure_tolerance``, temperatures within
     ``rules.temperature_tolerance`` of the lowest of their stack. A bias is told apart by its
     temperature alone, a dark also by exposure. Within a stack frames stand in order of time, or
-    of name where a time is missing. Frames whose shape or sample type is not that of most are
-    left out, with a finding.
+    of name where a time is missing. Frames whose shape, sample type or stated sections are not
+    those of most are left out, with a finding.
     """
     kept, findings = _of_one_form(list(frames))
     found = []
@@ -34,7 +35,7 @@ def stacks(
 
 
 def _of_one_form(frames: list[Frame]) -> tuple[list[Frame], list[Finding]]:
-    """The frames of the commonest shape and type, and a finding for each other one."""
+    """The frames of the commonest shape, type and sections; a finding for each other one."""
     if not frames:
         return [], []
     counts = Counter(map(_form, frames))
@@ -55,13 +56,17 @@ def _of_one_form(frames: list[Frame]) -> tuple[list[Frame], list[Finding]]:
 
 
 def _form(frame: Frame) -> Form:
-    return tuple((key, plane.shape, plane.dtype) for key, plane in frame.planes.items())
+    return tuple(
+        (key, plane.shape, plane.dtype, tuple(sorted(frame.sections.get(key, {}).items())))
+        for key, plane in frame.planes.items()
+    )
 
 
 def _form_text(form: Form) -> str:
     return ", ".join(
         f"{key + ': ' if key else ''}{rows} x {columns} {dtype} (rows x columns)"
-        for key, (rows, columns), dtype in form
+        + "".join(f", {keyword} {fits_section(section)}" for keyword, section in sections)
+        for key, (rows, columns), dtype, sections in form
     )
 
 

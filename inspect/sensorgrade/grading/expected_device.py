@@ -8,7 +8,7 @@ from typing import Any
 from sensorgrade.errors import RequestError
 from sensorgrade.grading.expected_uncertainty import FIELDS, ExpectedDevice
 from sensorgrade.grading.held import DeviceReadings
-from sensorgrade.recipe.model import Recipe
+from sensorgrade.recipe.model import Recipe, Section
 from sensorgrade.recipe.quantities import WrongQuantity, quantity
 
 FILLED = 0.9  # of the converter's range that saturation is taken to fill
@@ -40,7 +40,7 @@ def expected_device(
             if limit.name in FIELDS and limit.bound > 0.0:
                 values.setdefault(FIELDS[limit.name], limit.bound)
     sections = [output.image for output in recipe.sensor.outputs.values()]
-    sizes = [section.shape[0] * section.shape[1] for section in sections if section is not None]
+    sizes = [one.shape[0] * one.shape[1] for one in sections if isinstance(one, Section)]
     if sizes:
         values["pixels"] = min(sizes)
     device = replace(ExpectedDevice(), **values)

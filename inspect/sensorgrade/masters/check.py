@@ -46,7 +46,7 @@ def _audited(device: DeviceFrames, recipe: Recipe) -> DeviceFrames:
             return ready
         shapes = {key: plane.shape for key, plane in ready.frames[0].planes.items()}
         try:
-            layout = geometry(recipe.sensor, shapes)
+            layout = geometry(recipe.sensor, shapes, ready.frames[0].sections)
         except RequestError as error:
             finding = Finding(
                 "error",

@@ -9,15 +9,17 @@ import re
 import types
 from collections.abc import Collection
 from dataclasses import MISSING, Field, fields, is_dataclass
-from functools import cache
+from functools import cache, reduce
+from operator import or_
 from typing import Any, Union, get_args, get_origin, get_type_hints
 
 from sensorgrade.options import Declared
 from sensorgrade.recipe.document import Listing, Mapping, Node, Problems, Scalar, joined, shown
-from sensorgrade.recipe.model import Section
+from sensorgrade.recipe.model import HeaderSection, Section
 from sensorgrade.recipe.quantities import NUMBER, WrongQuantity, quantity
-from sensorgrade.recipe.section import WrongSection, section
+from sensorgrade.recipe.section import WrongSection, output_section, section
 
+OUTPUT_SECTION = Section | HeaderSection  # of an output, which a header may state
 MOST_NAMES = 12  # valid names that a message lists
 
 
@@ -127,7 +129,7 @@ def value(node: Node, annotation: Any, declared: Declared, where: str, problems:
 def stripped(annotation: Any) -> Any:
     """The annotation without ``| None``."""
     if get_origin(annotation) in (Union, types.UnionType):
-        (annotation,) = (part for part in get_args(annotation) if part is not type(None))
+        return reduce(or_, (part for part in get_args(annotation) if part is not type(None)))
     return annotation
 
 
@@ -138,6 +140,8 @@ def expectation(annotation: Any, declared: Declared) -> str:
         return alternatives(declared.choices)
     if annotation is Section:
         return 'a section "[x1:x2,y1:y2]"'
+    if annotation == OUTPUT_SECTION:
+        return 'a section "[x1:x2,y1:y2]" or header KEYWORD'
     if get_origin(annotation) is dict:
         return "names with values"
     if get_origin(annotation) is tuple:
@@ -174,9 +178,9 @@ class _Unfit(ValueError):
 
 
 def _scalar(node: Scalar, annotation: Any, declared: Declared) -> Any:
-    if annotation is Section:
+    if annotation is Section or annotation == OUTPUT_SECTION:
         try:
-            return section(node.text)
+            return section(node.text) if annotation is Section else output_section(node.text)
         except WrongSection as wrong:
             raise _Unfit(str(wrong)) from wrong
     if annotation is bool:

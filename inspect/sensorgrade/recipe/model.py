@@ -8,7 +8,7 @@ from sensorgrade.options import choice, entry, number, quantity
 COLOURS = {"R": "red", "G": "green", "B": "blue"}
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True, slots=True, order=True)
 class Section:
     """A rectangle of pixels, 0-based and half-open, rows before columns.
 
@@ -31,25 +31,35 @@ class Section:
         return slice(self.row_start, self.row_stop), slice(self.column_start, self.column_stop)
 
 
+@dataclass(frozen=True, slots=True)
+class HeaderSection:
+    """A section that the frames' own headers state; written in recipes ``header KEYWORD``."""
+
+    keyword: str
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class OutputOptions:
     """One amplifier: where its pixels lie in the raw frame, and where it sits."""
 
-    image: Section | None = entry(
-        "Image section in the raw frame, '[x1:x2,y1:y2]'; omit for all of the extension",
+    image: Section | HeaderSection | None = entry(
+        "Image section in the raw frame, '[x1:x2,y1:y2]', or 'header KEYWORD' where the frames"
+        " state it; omit for all of the extension",
         default=None,
     )
-    overscan: Section | None = entry(
+    overscan: Section | HeaderSection | None = entry(
         "Serial overscan columns beside the image section, '[x1:x2,y1:y2]'", default=None
     )
-    parallel_overscan: Section | None = entry(
+    parallel_overscan: Section | HeaderSection | None = entry(
         "Parallel overscan rows beyond the image section, '[x1:x2,y1:y2]'", default=None
     )
-    prescan: Section | None = entry("Serial prescan columns, '[x1:x2,y1:y2]'", default=None)
+    prescan: Section | HeaderSection | None = entry(
+        "Serial prescan columns, '[x1:x2,y1:y2]'", default=None
+    )
     extension: str | None = entry(
         "Name or number of the FITS extension that holds this output", default=None
     )
-    place: Section | None = entry(
+    place: Section | HeaderSection | None = entry(
         "Where the image section goes in the assembled image; needed when outputs come as"
         " separate extensions",
         default=None,

@@ -8,12 +8,18 @@ from dataclasses import fields, is_dataclass
 from typing import Any, get_args, get_origin
 
 from sensorgrade.options import Declared
-from sensorgrade.recipe.declared import annotations, declaration, required, stripped
+from sensorgrade.recipe.declared import (
+    OUTPUT_SECTION,
+    annotations,
+    declaration,
+    required,
+    stripped,
+)
 from sensorgrade.recipe.limits import LimitOptions
 from sensorgrade.recipe.load import REQUIRED, TOP, WORDS
 from sensorgrade.recipe.model import DecisionRule, FrameRules, LotPlan, Section, Sensor, Zone
 from sensorgrade.recipe.quantities import NUMBER, example
-from sensorgrade.recipe.section import PATTERN
+from sensorgrade.recipe.section import HEADER_PATTERN, PATTERN
 from sensorgrade.recipe.vocabulary import Vocabulary
 
 DIALECT = "https://json-schema.org/draft/2020-12/schema"
@@ -97,6 +103,8 @@ def _value(annotation: Any, declared: Declared) -> dict[str, Any]:
     origin = get_origin(annotation)
     if annotation is Section:
         return {"type": "string", "pattern": f"^{PATTERN}$"}
+    if annotation == OUTPUT_SECTION:
+        return {"type": "string", "pattern": f"^({PATTERN}|{HEADER_PATTERN})$"}
     if is_dataclass(annotation):
         assert isinstance(annotation, type)
         return _options(annotation)

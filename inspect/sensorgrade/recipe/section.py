@@ -1,11 +1,16 @@
-"""Sections of an image, written the FITS way: ``"[x1:x2,y1:y2]"``, 1-based and inclusive."""
+"""Sections of an image, written the FITS way: ``"[x1:x2,y1:y2]"``, 1-based and inclusive.
+
+Or left to the frames: ``header DSEC1`` is the section that each header states as DSEC1.
+"""
 
 import re
 
-from sensorgrade.recipe.model import Section
+from sensorgrade.recipe.model import HeaderSection, Section
 
 PATTERN = r"\s*\[\s*([0-9]{1,7})\s*:\s*([0-9]{1,7})\s*,\s*([0-9]{1,7})\s*:\s*([0-9]{1,7})\s*\]\s*"
 SECTION = re.compile(PATTERN)
+HEADER_PATTERN = r"\s*header\s+([A-Za-z0-9_-]{1,8})\s*"
+HEADER = re.compile(HEADER_PATTERN)
 STEPPED = re.compile(r"[^,]*:[^,]*:")
 
 
@@ -40,3 +45,19 @@ def section(text: str) -> Section:
         axis = "x" if last_x < first_x else "y"
         raise WrongSection(f"its last {axis} lies before its first; sections are not reversed")
     return Section(first_y - 1, last_y, first_x - 1, last_x)
+
+
+def output_section(text: str) -> Section | HeaderSection:
+    """As `section`, or the keyword of ``header KEYWORD``.
+
+    Raises
+    ------
+    WrongSection
+        As `section`, or the text names no header keyword.
+    """
+    found = HEADER.fullmatch(text)
+    if found is not None:
+        return HeaderSection(found[1].upper())
+    if text.split()[:1] == ["header"]:
+        raise WrongSection("name one keyword of up to 8 letters and digits, as in header DSEC1")
+    return section(text)
