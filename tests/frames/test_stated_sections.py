@@ -1,4 +1,4 @@
-"""Sections that frames' own headers state: DSEC1, BSEC1 and the like (common practice, no source)."""
+"""Sections that the frames' own headers state: DSEC1 and the like (common practice, no source)."""
 
 import json
 

@@ -101,22 +101,26 @@ SENSOR = [  # (what stands after "sensor:", the sentence)
      "sensor.outputs.a,b: expected a name of 1 to 31 letters, digits, spaces, '.', '+', '-' or '_'"
      " that starts with a letter or digit"),
     ('{technology: ccd, pixel_pitch: 9 um, outputs: {a: {image: "[0:5,1:5]"}}}',
-     'sensor.outputs.a.image: expected a section "[x1:x2,y1:y2]" or header KEYWORD, found "[0:5,1:5]"; pixels count'
-     " from 1"),
+     'sensor.outputs.a.image: expected a section "[x1:x2,y1:y2]" or header KEYWORD,'
+     ' found "[0:5,1:5]"; pixels count from 1'),
     ('{technology: ccd, pixel_pitch: 9 um, outputs: {a: {image: "[5:1,1:5]"}}}',
-     'sensor.outputs.a.image: expected a section "[x1:x2,y1:y2]" or header KEYWORD, found "[5:1,1:5]"; its last x'
-     " lies before its first; sections are not reversed"),
+     'sensor.outputs.a.image: expected a section "[x1:x2,y1:y2]" or header KEYWORD,'
+     ' found "[5:1,1:5]"; its last x lies before its first'
+     "; sections are not reversed"),
     ('{technology: ccd, pixel_pitch: 9 um, outputs: {a: {image: "[1:5:2,1:5]"}}}',
-     'sensor.outputs.a.image: expected a section "[x1:x2,y1:y2]" or header KEYWORD, found "[1:5:2,1:5]"; sections'
-     " have no steps"),
+     'sensor.outputs.a.image: expected a section "[x1:x2,y1:y2]" or header KEYWORD,'
+     ' found "[1:5:2,1:5]"; sections have no steps'),
     ('{technology: ccd, pixel_pitch: 9 um, outputs: {a: {image: "[*,1:5]"}}}',
-     'sensor.outputs.a.image: expected a section "[x1:x2,y1:y2]" or header KEYWORD, found "[*,1:5]"; write the'
-     " numbers of the first and last pixel instead of *"),
+     'sensor.outputs.a.image: expected a section "[x1:x2,y1:y2]" or header KEYWORD,'
+     ' found "[*,1:5]"; write the numbers'
+     " of the first and last pixel instead of *"),
     ('{technology: ccd, pixel_pitch: 9 um, outputs: {a: {image: [1, 5, 1, 5]}}}',
-     'sensor.outputs.a.image: expected a section "[x1:x2,y1:y2]" or header KEYWORD, found a list'),
+     'sensor.outputs.a.image: expected a section "[x1:x2,y1:y2]" or header KEYWORD,'
+     ' found a list'),
     ('{technology: ccd, pixel_pitch: 9 um, outputs: {a: {image: "1:5,1:5"}}}',
-     'sensor.outputs.a.image: expected a section "[x1:x2,y1:y2]" or header KEYWORD, found "1:5,1:5"; write four whole'
-     " numbers, as in [1:512,1:1024]"),
+     'sensor.outputs.a.image: expected a section "[x1:x2,y1:y2]" or header KEYWORD,'
+     ' found "1:5,1:5"; write four whole numbers,'
+     " as in [1:512,1:1024]"),
 ]  # fmt: skip
 
 
