@@ -106,7 +106,8 @@ def _levels(stack: Stack, frames: np.ndarray, layout: Geometry) -> FrameLevels:
     rows: tuple[np.ndarray, ...] = ()
     if stack.kind == "bias":
         rows = tuple(np.asarray(frames, np.float32)[:, r.rows, r.columns] for r in layout.regions)
-    return FrameLevels(stack, mean, np.full_like(mean, np.nan), None, rows)
+    sampled = np.array([frames[0][r.rows, r.columns].size for r in layout.regions])
+    return FrameLevels(stack, mean, np.full_like(mean, np.nan), sampled, rows)
 
 
 def _pair_tiles(

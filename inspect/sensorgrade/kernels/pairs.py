@@ -167,7 +167,7 @@ def pair_tiles(
     column,
     columns,
     step,
-    tile,
+    tile_columns,
     last_code,
     moments,
     saturated,
@@ -177,7 +177,7 @@ def pair_tiles(
 
     raw_a, raw_b : (R, W) uint16 as stored; swap, flip : (2,) uint16 masks for `native`
     row, column : first raw row (of the band) and column of the region; ``rows``, ``columns`` how
-        many of its pixels there are, ``step`` apart (2 for a colour plane); rows <= tile
+        many of its pixels there are, ``step`` apart (2 for a colour plane)
     last_code : samples at or above it are counted as saturated
     moments : (Tx, MOMENTS) float64, written: number kept, sums of A and B (raw DN), centred sums
         of A², B², AB, of the difference with its right and lower neighbour, and the numbers of
@@ -186,14 +186,14 @@ def pair_tiles(
     lines : (rows, columns) float32, written: A - B less its tile's mean, 0 where left out; or
         (0, 0) when line noise is not wanted
     """
-    first = np.empty(tile * tile, np.float32)
-    second = np.empty(tile * tile, np.float32)
-    difference = np.empty(tile * tile, np.float32)
-    keep = np.empty(tile * tile, np.bool_)
+    first = np.empty(rows * tile_columns, np.float32)
+    second = np.empty(rows * tile_columns, np.float32)
+    difference = np.empty(rows * tile_columns, np.float32)
+    keep = np.empty(rows * tile_columns, np.bool_)
     sums = np.empty(5, np.float64)
     for index in range(moments.shape[0]):
-        start = index * tile
-        width = min(tile, columns - start)
+        start = index * tile_columns
+        width = min(tile_columns, columns - start)
         n = rows * width
         base = column + start * step
         pivot_a = load_tile(raw_a, row, rows, base, width, step, swap[0], flip[0], first)

@@ -10,7 +10,7 @@ from sensorgrade.kernels.flagged import settle_flagged
 from sensorgrade.kernels.overscan import overscan_means, profile_means
 from sensorgrade.kernels.pairs import MOMENTS, line_sums, pair_tiles
 from sensorgrade.kernels.stack import reduce_band
-from sensorgrade.masters.reduced import TILE, NoiseModel
+from sensorgrade.masters.reduced import NoiseModel, tile_shape
 from sensorgrade.masters.source import OpenStack, Samples
 from sensorgrade.masters.survey import used_overscan
 
@@ -35,6 +35,7 @@ class PairArrays:
     """
 
     region: Region
+    tile: tuple[int, int]
     moments: NDArray[np.float64]
     saturated: NDArray[np.float64]
     offsets: NDArray[np.float64]
@@ -181,9 +182,10 @@ def _pairs(
     columns = len(range(region.columns.start, region.columns.stop, step))
     first = band.start - output.image.row_start
     count = len(range(shift, raw.shape[1], step))
-    for top in range(0, count, TILE):
-        rows = min(TILE, count - top)
-        tile = (first // step + top) // TILE
+    tile_rows, tile_columns = arrays.tile
+    for top in range(0, count, tile_rows):
+        rows = min(tile_rows, count - top)
+        tile = (first // step + top) // tile_rows
         row = shift + top * step
         wanted = arrays.row_sums is not None
         lines = np.zeros((rows, columns) if wanted else (0, 0), np.float32)
@@ -200,7 +202,7 @@ def _pairs(
                 column,
                 columns,
                 step,
-                TILE,
+                tile_columns,
                 work.last_code,
                 arrays.moments[pair, tile],
                 arrays.saturated[pair, tile],
@@ -211,7 +213,7 @@ def _pairs(
                 arrays.offsets[pair, tile, side] = used.mean(dtype=np.float64)
             if arrays.row_sums is not None and arrays.column_sums is not None:
                 line_sums(lines, row_sum, column_sum)
-                at = tile * TILE
+                at = tile * tile_rows
                 arrays.row_sums[pair, at : at + rows] = row_sum
                 arrays.column_sums[pair, tile] = column_sum
 
@@ -220,9 +222,11 @@ def new_pair_arrays(region: Region, pairs: int, *, lines: bool) -> PairArrays:
     """Empty arrays for one region of a stack with ``pairs`` pairs."""
     rows = len(range(region.rows.start, region.rows.stop, region.rows.step or 1))
     columns = len(range(region.columns.start, region.columns.stop, region.columns.step or 1))
-    down, across = -(-rows // TILE), -(-columns // TILE)
+    tile = tile_shape(rows, columns)
+    down, across = -(-rows // tile[0]), -(-columns // tile[1])
     return PairArrays(
         region=region,
+        tile=tile,
         moments=np.zeros((pairs, down, across, MOMENTS)),
         saturated=np.zeros((pairs, down, across)),
         offsets=np.zeros((pairs, down, 2)),

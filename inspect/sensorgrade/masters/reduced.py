@@ -9,6 +9,8 @@ from sensorgrade.frames.frame import Stack
 from sensorgrade.frames.geometry import Geometry, Region
 
 TILE = 32  # rows and columns of a photon-transfer tile, within a region
+LARGE = 1 << 22  # pixels of a region that has tiles enough when each is four times as large
+FLAT_TILE = 16, 256  # rows and columns of those: few rows, as whole tiles are read at once
 
 
 @dataclass(frozen=True, slots=True)
@@ -50,12 +52,17 @@ class StackImage:
         return len(self.stack.frames)
 
 
+def tile_shape(rows: int, columns: int) -> tuple[int, int]:
+    """Rows and columns of a photon-transfer tile in a region of that size."""
+    return (TILE, TILE) if rows * columns < LARGE else FLAT_TILE
+
+
 @dataclass(frozen=True, slots=True)
 class PairTiles:
     """Second moments of successive frame pairs, tile by tile, for one stack and one region.
 
-    Pair p is frames 2p and 2p+1 of the stack, named A and B. Tiles are ``TILE`` x ``TILE`` pixels
-    of the region (smaller at its edges). All arrays are float64 of shape (P, Ty, Tx); sums run
+    Pair p is frames 2p and 2p+1 of the stack, named A and B. Tiles are parts of the region
+    (`tile_shape`, less at its edges). All arrays are float64 of shape (P, Ty, Tx); sums run
     over ``count`` pixels kept (differences past 5 sigma of their tile are left out of all sums).
 
     mean_a, mean_b      mean of raw DN less the row's overscan (else raw DN)
@@ -102,15 +109,15 @@ class FrameLevels:
     """Level of each frame from a sample of its rows, for drift and for the audit.
 
     ``mean`` (L, R) float64 [DN], frames by regions, overscan-corrected; ``overscan`` (L, R) mean
-    overscan level [DN] or NaN without one; ``histogram`` (65536,) int64 counts of raw codes
-    over the sampled rows, None for samples that are not 16-bit integers. ``rows`` holds, for bias
-    stacks, the sampled rows of each region, (L, S, N) float32 [raw DN]; it is empty for others.
+    overscan level [DN] or NaN without one; ``sampled`` (R,) samples of a frame that its level is
+    the mean of. ``rows`` holds, for bias stacks, the sampled rows of each region, (L, S, N)
+    float32 [raw DN]; it is empty for others.
     """
 
     stack: Stack
     mean: NDArray[np.float64]
     overscan: NDArray[np.float64]
-    histogram: NDArray[np.int64] | None
+    sampled: NDArray[np.int64]
     rows: tuple[NDArray[np.float32], ...] = ()
 
 

@@ -21,7 +21,6 @@ from sensorgrade.masters.bands import (
     new_pair_arrays,
 )
 from sensorgrade.masters.reduced import (
-    TILE,
     NoiseModel,
     PairTiles,
     Reduced,
@@ -174,7 +173,8 @@ def _reduce_stack(
             pairs=pairs,
             profiles=profiles,
         )
-        bands = list(_bands(source, key, geometry, tiled=bool(paired)))
+        tallest = max((part.tile[0] for part in pairs), default=0)
+        bands = list(_bands(source, key, geometry, tile_rows=tallest))
         found.extend(_do_bands(work, bands, workers))
     return (
         None if arrays is None else _stack_image(stack, arrays, found),
@@ -214,15 +214,20 @@ def _do_bands(work: Work, bands: list[Band], workers: int) -> list[BandSuspects]
         return [suspects for found in pool.map(one, bands) for suspects in found]
 
 
-def _bands(source: OpenStack, extension: str, geometry: Geometry, *, tiled: bool) -> Iterable[Band]:
-    """Bands of rows for each group of outputs that lie in the same rows of the raw frame."""
+def _bands(
+    source: OpenStack, extension: str, geometry: Geometry, *, tile_rows: int
+) -> Iterable[Band]:
+    """Bands of rows for each group of outputs that lie in the same rows of the raw frame.
+
+    No band parts a tile; ``tile_rows`` is 0 for stacks without.
+    """
     groups: dict[tuple[int, int], list[Output]] = {}
     for output in geometry.outputs:
         if output.extension == extension:
             rows = (output.image.row_start, output.image.row_stop)
             groups.setdefault(rows, []).append(output)
     step = max(region.rows.step or 1 for region in geometry.regions)
-    unit = TILE * step if tiled else 1
+    unit = max(1, tile_rows * step)
     line = len(source.planes) * source.columns * source.dtype.itemsize
     height = max(1, BAND_BYTES // (line * unit)) * unit
     for (start, stop), outputs in groups.items():
@@ -299,7 +304,7 @@ def _pair_tiles(stack: Stack, arrays: PairArrays) -> PairTiles:
     return PairTiles(
         stack=stack,
         region=arrays.region,
-        count=count,
+        count=count.copy(),  # a view would keep all moments
         mean_a=sum_a / kept - offset_a,
         mean_b=sum_b / kept - offset_b,
         var_a=square_a / freedom,

@@ -41,10 +41,7 @@ def survey(stack: Stack, sources: dict[str, OpenStack], geometry: Geometry) -> S
     means = np.empty((len(stack.frames), len(geometry.regions)))
     overscans = np.full_like(means, np.nan)
     variance: dict[str, float] = {}
-    histogram: NDArray[np.int64] | None = None
-    integer = all(source.dtype == np.uint16 for source in sources.values())
-    if integer:
-        histogram = np.zeros(65536, np.int64)
+    sampled = np.zeros(len(geometry.regions), np.int64)
     parts: dict[int, NDArray[np.float32]] = {}
     read: dict[tuple[str, int, int], tuple[NDArray[np.int64], Samples]] = {}
     for output in geometry.outputs:
@@ -55,8 +52,6 @@ def survey(stack: Stack, sources: dict[str, OpenStack], geometry: Geometry) -> S
             read[key] = rows, read_rows(source, rows)
         rows, samples = read[key]
         image = samples[:, :, output.image.column_start : output.image.column_stop]
-        if histogram is not None:
-            histogram += np.bincount(image.reshape(-1), minlength=65536)
         overscan = overscan_level(samples, output)
         for index, region in enumerate(geometry.regions):
             if region.output != output.name:
@@ -64,6 +59,7 @@ def survey(stack: Stack, sources: dict[str, OpenStack], geometry: Geometry) -> S
             part = image[:, in_region(rows, output, region)][:, :, region_columns(output, region)]
             means[:, index] = part.mean(axis=(1, 2), dtype=np.float64) - np.nan_to_num(overscan)
             overscans[:, index] = overscan
+            sampled[index] = part[0].size
             if stack.kind == "bias":
                 parts[index] = part.astype(np.float32)
             if len(stack.frames) > 1:
@@ -72,7 +68,7 @@ def survey(stack: Stack, sources: dict[str, OpenStack], geometry: Geometry) -> S
         stack=stack,
         mean=means,
         overscan=overscans,
-        histogram=histogram,
+        sampled=sampled,
         rows=tuple(parts[index] for index in sorted(parts)),
     )
     return Survey(levels, variance or None)

@@ -35,23 +35,18 @@ def offset_scatter(inputs: Inputs, region: Region) -> tuple[float, int]:
     the whole region put in.
     """
     index = region_index(inputs, region)
-    squares, degrees, sampled = 0.0, 0, 0.0
+    squares, degrees, sampled = 0.0, 0, 1
     for levels in inputs.reduced.levels:
         if levels.stack.kind in ("bias", "dark") and len(levels.mean) > 1:
             column: NDArray[np.float64] = levels.mean[:, index]
             squares += float(((column - column.mean()) ** 2).sum())
             degrees += len(column) - 1
-            if levels.histogram is not None:
-                sampled = float(levels.histogram.sum()) / len(column)
+            sampled = int(levels.sampled[index])
     if degrees == 0:
         raise NotMeasured("needs two bias or dark frames taken alike, to know how levels scatter")
-    rows, columns = inputs.reduced.geometry.shape
     size = _length(region.rows) * _length(region.columns)
     noise = inputs.reduced.noise[region.scope].read
-    scatter = squares / degrees
-    if sampled:
-        scatter -= noise / (sampled * size / (rows * columns))
-        scatter = max(scatter, 0.0) + noise / size
+    scatter = max(squares / degrees - noise / sampled, 0.0) + noise / size
     return sqrt(scatter), degrees
 
 

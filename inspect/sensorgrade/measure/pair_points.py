@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 from sensorgrade.errors import NotMeasured
 from sensorgrade.frames.frame import Stack
 from sensorgrade.frames.geometry import Region
-from sensorgrade.masters.reduced import TILE, PairTiles
+from sensorgrade.masters.reduced import PairTiles, tile_shape
 from sensorgrade.measure.stage import Inputs
 
 SMALLEST_TILE = 16  # pixels; a smaller tile's variance says nothing
@@ -37,14 +37,14 @@ class PairPoints:
 
 
 def tile_means(image: NDArray[np.float32]) -> NDArray[np.float64]:
-    """Means of (M, N) over its TILE x TILE tiles, from every fourth row: (Ty, Tx) float64.
+    """Means of (M, N) over its tiles, from every fourth row: (Ty, Tx) float64.
 
     Rows are thinned because the pattern inside a tile averages out long before all are read.
     """
-    thin = image[::4] if image.shape[0] >= TILE else image
-    step = TILE // 4 if image.shape[0] >= TILE else TILE
-    row_starts = np.arange(0, thin.shape[0], step)
-    column_starts = np.arange(0, thin.shape[1], TILE)
+    rows, columns = tile_shape(*image.shape)
+    thin = image[::4] if image.shape[0] >= rows else image
+    row_starts = np.arange(0, thin.shape[0], rows // 4 if image.shape[0] >= rows else rows)
+    column_starts = np.arange(0, thin.shape[1], columns)
     sums = np.add.reduceat(thin, column_starts, axis=1)
     sums = np.add.reduceat(sums, row_starts, axis=0, dtype=np.float64)
     heights = np.diff(np.append(row_starts, thin.shape[0]))
