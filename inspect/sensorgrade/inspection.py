@@ -4,7 +4,7 @@ import platform
 import tempfile
 from collections.abc import Callable, Iterable, Sequence
 from concurrent.futures import ThreadPoolExecutor
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import partial
 from importlib.metadata import version
 from pathlib import Path
@@ -201,11 +201,17 @@ def inspect_lot(
         report=report,
     )
     results, failures = ledger.results(), ledger.failures()
-    write_whole(ledger.folder / "lot.csv", lot_csv(lot_columns(results, failures)))
-    write_whole(
-        ledger.folder / "lot.html",
-        lot_page(results, failures=failures, recipe=recipe, name=ledger.folder.name),
-    )
+    table = lot_csv(lot_columns(results, failures))
+    page = lot_page(results, failures=failures, recipe=recipe, name=ledger.folder.name)
+    try:
+        write_whole(ledger.folder / "lot.csv", table)
+        write_whole(ledger.folder / "lot.html", page)
+    except OSError as error:
+        sentence = (
+            f"{ledger.folder}: lot.csv and lot.html cannot be written ({error.strerror}); every"
+            " device that is done is kept, make room and give the same command again"
+        )
+        return replace(outcome, stopped=outcome.stopped or sentence)
     return outcome
 
 

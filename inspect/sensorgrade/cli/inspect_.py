@@ -92,7 +92,6 @@ def command(
     else:
         batches = iter([find_devices(sources, recipe)])
     out = folder or Path("reports") / sources[0].resolve().name
-    out.mkdir(parents=True, exist_ok=True)
     with run_folder(out) as ledger:
         for devices in batches:
             with shown_progress(quiet=quiet) as report:

@@ -86,3 +86,10 @@ def main(arguments: list[str] | None = None) -> Any:
     except SensorgradeError as error:
         click.echo(f"sensorgrade: {error}", err=True)
         sys.exit(WRONG_REQUEST)
+    except OSError as error:  # a full disk, a folder without permission
+        from sensorgrade.recipe.document import printable
+
+        where = f"{printable(str(error.filename), 4096)}: " if error.filename else ""
+        why = error.strerror or str(error)
+        click.echo(f"sensorgrade: {where}{why}; look at the disk and its permissions", err=True)
+        sys.exit(WRONG_REQUEST)

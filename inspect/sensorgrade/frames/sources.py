@@ -4,7 +4,7 @@ import os
 import re
 import stat
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 from sensorgrade.errors import RequestError
@@ -92,7 +92,8 @@ def _walk(
         with os.scandir(folder) as entries:
             found = sorted(entries, key=lambda entry: natural(entry.name))
     except OSError as error:
-        yield _remark(folder, source, prefix, "error", _why(error), "make it readable")
+        told = _remark(folder, source, prefix, "error", _why(error), "make it readable")
+        yield replace(told, folder=folder)  # it may be the very folder of a device
         return
     if any(entry.name == LEDGER for entry in found):
         seen_text = "holds the results of a run, not raw frames; passed over"
