@@ -74,6 +74,11 @@ def open_for_reading(folder: Path) -> sqlite3.Connection:
         raise RequestError(f"{path}: cannot be read as a ledger ({error})") from error
     try:
         version = _version(connection, path)
+        if version == 0:
+            raise RequestError(
+                f"{path}: holds nothing yet; its run ended before it could begin, give the"
+                " inspection again"
+            )
         if version < VERSION:
             raise RequestError(
                 f"{path}: ledger of form {version}, this program reads {VERSION}; run the"
