@@ -47,7 +47,8 @@ PLAN = frame_plan(
 )
 
 
-def inspected(made, *, seed=1, plan=PLAN, options=ALL, zones=None):
+def measured(made, *, seed=1, plan=PLAN):
+    """What the finders look at, and the truth."""
     simulated = simulate_device(made, plan, seed=seed, serial="T")
     layout = geometry(made.sensor, {"": (made.rows, made.columns)})
     reduced = reduce_frames(simulated.frames, layout, made.sensor, threads=1)
@@ -55,7 +56,12 @@ def inspected(made, *, seed=1, plan=PLAN, options=ALL, zones=None):
     inputs.results["photon_transfer"] = photon_transfer.STAGE.run(
         inputs, photon_transfer.STAGE.options()
     )
-    return find_defects(inputs, options, zones or {}), simulated.truth
+    return inputs, simulated.truth
+
+
+def inspected(made, *, seed=1, plan=PLAN, options=ALL, zones=None):
+    inputs, truth = measured(made, seed=seed, plan=plan)
+    return find_defects(inputs, options, zones or {}), truth
 
 
 def number(defects, name, scope="device"):

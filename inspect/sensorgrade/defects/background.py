@@ -96,10 +96,21 @@ def outside(
     upper: NDArray[np.float32],
 ) -> tuple[NDArray[np.int32], NDArray[np.int32]]:
     """Rows and columns of the pixels below ``lower`` or above ``upper`` (block grids)."""
-    room = 1 << 16
-    while True:
-        rows, columns = np.empty(room, np.int32), np.empty(room, np.int32)
-        found = outside_limits(image, *place.arguments, lower, upper, rows, columns)
-        if found <= room:
-            return rows[:found], columns[:found]
-        room = found
+    most = 1 << 16
+    while (found := few_outside(image, place, lower, upper, most=most)) is None:
+        most *= 16
+    return found
+
+
+def few_outside(
+    image: NDArray[np.float32],
+    place: Lattice,
+    lower: NDArray[np.float32],
+    upper: NDArray[np.float32],
+    *,
+    most: int,
+) -> tuple[NDArray[np.int32], NDArray[np.int32]] | None:
+    """As `outside`; None where they are more than ``most``."""
+    rows, columns = np.empty(most, np.int32), np.empty(most, np.int32)
+    found = outside_limits(image, *place.arguments, lower, upper, rows, columns)
+    return None if found > most else (rows[:found], columns[:found])

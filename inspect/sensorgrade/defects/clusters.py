@@ -29,27 +29,37 @@ COUNTS = (CountName("clusters", ("cluster",), "Groups of defective pixels that t
 
 
 def clusters(inputs: Inputs, options: ClusterOptions) -> Found:
-    """Nothing of its own: groups are made of what the other finders found; see `groups`."""
+    """Nothing of its own: clusters are made of what the other finders found; see `groups`."""
     return Found(points=np.empty(0, POINT), lines=(), lacking={})
 
 
 STAGE = DefectStage("clusters", ClusterOptions, clusters, COUNTS)
 
 
-def groups(
-    rows: NDArray[np.int32], columns: NDArray[np.int32], options: ClusterOptions
-) -> list[NDArray[np.int64]]:
-    """Indices of the pixels of each cluster.
+def cluster_numbers(
+    rows: NDArray[np.integer], columns: NDArray[np.integer], options: ClusterOptions
+) -> NDArray[np.int64]:
+    """The number of the cluster that each pixel is in, counted from 0; -1 in none.
 
     With ``distance`` 1 pixels that touch by a side or a corner belong together (8-connected).
     """
     if len(rows) < options.smallest:
-        return []
+        return np.full(len(rows), -1)
     places = np.column_stack([rows, columns])
     near = cKDTree(places).query_pairs(options.distance + 0.5, p=np.inf, output_type="ndarray")
-    if not len(near):
-        return []
     link = coo_matrix((np.ones(len(near)), near.T), shape=(len(rows), len(rows)))
     _, label = connected_components(link, directed=False)
-    sizes = np.bincount(label)
-    return [np.flatnonzero(label == one) for one in np.flatnonzero(sizes >= options.smallest)]
+    large = np.bincount(label) >= options.smallest
+    number = np.where(large, np.cumsum(large) - 1, -1)
+    found: NDArray[np.int64] = number[label]
+    return found
+
+
+def groups(
+    rows: NDArray[np.int32], columns: NDArray[np.int32], options: ClusterOptions
+) -> list[NDArray[np.int64]]:
+    """Indices of the pixels of each cluster, as `cluster_numbers` tells them."""
+    number = cluster_numbers(rows, columns, options)
+    order = np.argsort(number, kind="stable")
+    starts = np.searchsorted(number[order], np.arange(number.max(initial=-1) + 1))
+    return np.split(order, starts)[1:]

@@ -5,6 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from sensorgrade.defects.candidates import Candidates
 from sensorgrade.measurement import Finding
 
 # One row of the defect table. Positions are in the assembled image, 0-based and half-open; the
@@ -49,9 +50,14 @@ class DefectCount:
 
 @dataclass(frozen=True, slots=True)
 class Defects:
-    """``table`` is a DEFECT array, ``mask`` (M, N) uint16 with the bits of defects/bits.py."""
+    """``table`` is a DEFECT array, ``mask`` (M, N) uint16 with the bits of defects/bits.py.
+
+    ``candidates`` are what the counts can be made from again at other thresholds, None where
+    nothing was kept for that.
+    """
 
     table: NDArray[np.void]
     mask: NDArray[np.uint16]
     counts: tuple[DefectCount, ...]
     findings: tuple[Finding, ...]
+    candidates: Candidates | None = None

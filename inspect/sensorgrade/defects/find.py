@@ -1,7 +1,7 @@
 """All defects of a device: what the finders found, joined so that nothing counts twice."""
 
 import os
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from concurrent.futures import ThreadPoolExecutor
 from typing import Any
 
@@ -9,19 +9,21 @@ import numpy as np
 from numpy.typing import NDArray
 
 from sensorgrade.defects.bits import BY_NAME
+from sensorgrade.defects.candidates import CANDIDATE, REACH, SETTLED, Candidates, Layout
 from sensorgrade.defects.clusters import ClusterOptions, groups
 from sensorgrade.defects.defect import DEFECT, DefectCount, Defects
-from sensorgrade.defects.stage import NOT_ASKED, POINT, CountName, Line
+from sensorgrade.defects.ranking import CERTAIN, RANK, ranked
+from sensorgrade.defects.stage import NOT_ASKED, POINT, CountName, Found, Line
 from sensorgrade.defects.table import FINDERS
+from sensorgrade.defects.thresholds import MOVABLE
 from sensorgrade.defects.zones import in_zone, zone_names
 from sensorgrade.frames.geometry import Geometry
 from sensorgrade.measure.stage import Inputs
 from sensorgrade.measurement import Finding
 from sensorgrade.recipe.model import Zone
 
-CERTAIN = 0.5  # a candidate is a defect when it is likelier past the threshold than not
-# When one pixel stands apart in several ways, it counts as the first of these.
-RANK = ("dead", "hot", "telegraph", "dim", "bright", "noisy", "offset", "warm", "trap")
+MOVING = tuple(kind for kinds in MOVABLE.values() for kind in kinds)
+TRAP_COLUMN = "trap column"
 
 
 def find_defects(
@@ -64,7 +66,10 @@ def find_defects(
     for kind in np.unique(points["kind"]):
         sure = points[(points["kind"] == kind) & (points["probability"] >= CERTAIN)]
         mask[sure["row"], sure["column"]] |= BY_NAME[str(kind)].value
-    points = _ranked(points[~on_line])
+    points = points[~on_line]
+    candidates = _candidates(list(found.values()), points, lines, mask, geometry)
+    numbers = _pixel_numbers(points, geometry.shape)
+    points = points[ranked(numbers, _ranks(points), points["probability"])]
     rows = [_line_row(line) for line in lines]
     if "clusters" in options:
         cluster_rows, points = _clustered(points, options["clusters"], mask)
@@ -81,17 +86,54 @@ def find_defects(
         mask=mask,
         counts=tuple(_counts(names, table, points, geometry, zones)),
         findings=tuple(_findings(lacking)),
+        candidates=candidates,
     )
 
 
-def _ranked(points: NDArray[np.void]) -> NDArray[np.void]:
-    """One candidate for each pixel: a sure one before a doubtful one, then by rank."""
-    rank = {kind: place for place, kind in enumerate(RANK)}
-    places = np.array([rank[str(kind)] for kind in points["kind"]], np.int64)
-    order = np.lexsort((places, points["probability"] < CERTAIN))
-    points = points[order]
-    _, first = np.unique(points[["row", "column"]], return_index=True)
-    return points[np.sort(first)]
+def _pixel_numbers(points: NDArray[np.void], shape: tuple[int, int]) -> NDArray[np.int64]:
+    number: NDArray[np.int64] = points["row"].astype(np.int64) * shape[1] + points["column"]
+    return number
+
+
+def _ranks(points: NDArray[np.void]) -> NDArray[np.int64]:
+    kinds, at = np.unique(points["kind"], return_inverse=True)
+    return np.array([RANK.index(str(kind)) for kind in kinds], np.int64)[at]
+
+
+def _candidates(
+    found: Iterable[Found],
+    points: NDArray[np.void],
+    lines: Iterable[Line],
+    mask: NDArray[np.uint16],
+    geometry: Geometry,
+) -> Candidates:
+    """What the finders keep for other thresholds, without the pixels of bad lines.
+
+    ``points`` are all that are on no line, ``mask`` has the lines' bits.
+    """
+    of_lines = BY_NAME["column"].value | BY_NAME["row"].value
+    pixels = np.concatenate([one.candidates for one in found] or [np.empty(0, CANDIDATE)])
+    others = points[~np.isin(points["kind"], MOVING)]
+    traps = [line for line in lines if line.kind == TRAP_COLUMN]
+    settled = np.zeros(len(others) + len(traps), SETTLED)
+    here = settled[: len(others)]
+    here["kind"] = _ranks(others)
+    for name in ("row", "column", "significance", "probability"):
+        here[name] = others[name]
+    settled[len(others) :] = [
+        (len(RANK), line.row_start, line.column_start, line.significance, line.probability)
+        for line in traps
+    ]
+    return Candidates(
+        layout=Layout(
+            geometry.shape,
+            tuple((output.name, output.place) for output in geometry.outputs),
+            tuple(region.scope for region in geometry.regions),
+        ),
+        pixels=pixels[mask[pixels["row"], pixels["column"]] & of_lines == 0],
+        reaches=np.concatenate([one.reaches for one in found] or [np.empty(0, REACH)]),
+        settled=settled,
+    )
 
 
 def _clustered(

@@ -1,64 +1,37 @@
 """Single pixels that stand apart: dark current, response, offset, temporal noise."""
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy.special import gammainccinv, ndtr
 
-from sensorgrade.defects.background import background, lattice, outside
+from sensorgrade.defects.background import Lattice, background, few_outside, lattice, outside
+from sensorgrade.defects.candidates import CANDIDATE, DARK, HIGH, LOW, NEUTRAL, OFFSET, REACH
 from sensorgrade.defects.stage import NOT_ASKED, POINT, CountName, DefectStage, Found
+from sensorgrade.defects.thresholds import (
+    NEAR,
+    PixelOptions,
+    judged,
+    nearest_threshold,
+    significance,
+)
 from sensorgrade.errors import NotMeasured
 from sensorgrade.frames.frame import Stack
 from sensorgrade.frames.geometry import Region
 from sensorgrade.kernels.excess_scatter import excess_scatter
 from sensorgrade.masters.reduced import StackImage
 from sensorgrade.measure.stage import Inputs
-from sensorgrade.options import number, quantity
 
 CHANCE = 1e-8  # of a quiet pixel being called noisy
 LEAST_FRAMES = 5  # to tell a noisy pixel by its scatter
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class PixelOptions:
-    """Recipe keys under ``stages: pixels``."""
-
-    hot: float | None = quantity(
-        "electron / s",
-        "Dark current above the local level from which a pixel is hot; else ten times the median",
-        default=None,
-        minimum=0.0,
-    )
-    warm: float | None = quantity(
-        "electron / s",
-        "The same for warm pixels; none are looked for without it",
-        default=None,
-        minimum=0.0,
-    )
-    dead: float = quantity(
-        "%", "Response over the local one below which a pixel is dead", default=20.0, minimum=0.0
-    )
-    dim: float = quantity(
-        "%", "Response over the local one below which a pixel is dim", default=80.0, minimum=0.0
-    )
-    bright: float = quantity(
-        "%", "Response over the local one above which it is bright", default=120.0, minimum=100.0
-    )
-    offset: float | None = quantity(
-        "electron",
-        "Departure of the bias level from the local one; else ten times the read noise",
-        default=None,
-        minimum=0.0,
-    )
-    noisy: float = number(
-        "Temporal noise over the output's from which a pixel is noisy", default=3.0, minimum=1.0
-    )
-    significance: float = number(
-        "A departure counts only from so many of its standard uncertainties",
-        default=5.5,
-        minimum=3.0,
-    )
+# What is kept for other thresholds: pixels past a part of the way to the nearest one, as far as
+# they are few.
+KEPT_FROM = {DARK: 0.25, LOW: 0.5, HIGH: 0.5, OFFSET: 0.5}
+KEPT = 4096  # of each part and region, the farthest
+MANY = 1 << 17  # that are looked at for it
+UNITS = ("electron / s", "%", "%", "electron")
 
 
 COUNTS = (
@@ -83,6 +56,9 @@ def pixels(inputs: Inputs, options: PixelOptions) -> Found:
 
     Notes
     -----
+    Pixels short of a threshold are told too where they may be past it, with their probability, and
+    those farther from the usual pixel are kept for other thresholds (see `recount`).
+
     Uncertainty of a pixel's value is sqrt(variance / count) of the stack it comes from, the
     variance being the larger of the pixel's own and the noise model's, so that a lucky pixel of
     few frames is not taken for a sharp one. A pixel is found when its value is past the threshold
@@ -90,98 +66,245 @@ def pixels(inputs: Inputs, options: PixelOptions) -> Found:
     a Gaussian population does so by chance.
     """
     found: list[NDArray[np.void]] = []
+    kept: list[Kept] = []
     lacking: dict[str, str] = {}
-    parts = {"dark": _dark, "response": _response, "offset": _offset, "noise": _noise}
+    parts = {"dark": _dark, "response": _response, "offset": _offset}
+    regions = inputs.reduced.geometry.regions
     for part, look in parts.items():
         try:
-            for region in inputs.reduced.geometry.regions:
-                found.extend(look(inputs, options, region))
+            for number, region in enumerate(regions):
+                for sought in look(inputs, options, region):
+                    found.extend(_points(sought, options))
+                    kept.append(_kept(sought, number, options))
         except NotMeasured as missing:
             lacking.update({name: str(missing) for name in PARTS[part]})
+    try:
+        found.extend(_noise(inputs, options, region) for region in regions)
+    except NotMeasured as missing:
+        lacking.update({name: str(missing) for name in PARTS["noise"]})
     if options.warm is None:
         lacking["warm_pixels"] = NOT_ASKED
-    points = np.concatenate(found) if found else np.empty(0, POINT)
-    return Found(points=points, lines=(), lacking=lacking)
+    return Found(
+        points=np.concatenate(found) if found else np.empty(0, POINT),
+        lines=(),
+        lacking=lacking,
+        candidates=np.concatenate([one.pixels for one in kept] or [np.empty(0, CANDIDATE)]),
+        reaches=np.array([one.reach for one in kept], REACH),
+    )
 
 
 STAGE = DefectStage("pixels", PixelOptions, pixels, COUNTS)
 
 
-def _dark(inputs: Inputs, options: PixelOptions, region: Region) -> list[NDArray[np.void]]:
+@dataclass(frozen=True, slots=True)
+class Sought:
+    """Pixels of one part and region that stand apart: arrays (K,), as in `CANDIDATE`.
+
+    ``automatic``, ``typical`` and ``reach`` are as in `REACH`.
+    """
+
+    part: int
+    rows: NDArray[np.int32]
+    columns: NDArray[np.int32]
+    value: NDArray[np.float32]
+    error: NDArray[np.float32]
+    automatic: float
+    typical: float
+    reach: float
+
+
+@dataclass(frozen=True, slots=True)
+class Kept:
+    """What is kept of a `Sought`: a CANDIDATE array and a REACH row."""
+
+    pixels: NDArray[np.void]
+    reach: tuple[int, int, float, float, float]
+
+
+def _dark(inputs: Inputs, options: PixelOptions, region: Region) -> list[Sought]:
     master = inputs.masters.dark
     if master is None or not master.stack.exposure:
         raise NotMeasured("needs a master dark: bias frames, and dark frames with an exposure time")
     gain = inputs.measured("conversion_gain", region.scope).value
     factor = gain / master.stack.exposure  # electron/s for a DN
     level = background(master.values, region)
-    hot = options.hot
-    if hot is None:
-        hot = 10 * max(float(np.median(level.middle)) * factor, 0.0)
-    least = hot if options.warm is None else min(options.warm, hot)
+    automatic = 10 * max(float(np.median(level.middle)) * factor, 0.0)
     image = _stack_image(inputs, master.stack)
-    floor = options.significance * _typical_error(inputs, image, region) * factor
-    upper = level.middle + np.float32(max(least, floor) / factor)
+    typical = _typical_error(inputs, image, region) * factor
     nothing = np.full_like(level.middle, -np.inf)
-    rows, columns = outside(master.values, level.place, nothing, upper)
+
+    def past(reach: float) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
+        return nothing, level.middle + np.float32(reach / factor)
+
+    threshold = nearest_threshold(DARK, options, automatic)
+    rows, columns, reach = _beyond(
+        master.values,
+        level.place,
+        past,
+        deep=KEPT_FROM[DARK] * threshold,
+        needed=threshold - NEAR * typical,
+        least=options.significance * typical,
+    )
     value = (master.values[rows, columns] - level.at(rows, columns, level.middle)) * factor
     error = _errors(inputs, image, region, rows, columns) * factor
     if inputs.reduced.bias is not None:
         error = np.hypot(
             error, _errors(inputs, inputs.reduced.bias, region, rows, columns) * factor
         )
-    points = _points("hot", rows, columns, value, error, "electron / s", value - hot)
-    if options.warm is not None:
-        warm = value < hot
-        points["kind"][warm] = "warm"
-        points["probability"][warm] = ndtr((value - options.warm) / error)[warm]
-    past = value > least
-    return [points[past & (points["significance"] >= options.significance)]]
+    return [
+        Sought(
+            DARK,
+            rows,
+            columns,
+            value.astype(np.float32),
+            error.astype(np.float32),
+            automatic,
+            typical,
+            reach,
+        )
+    ]
 
 
-def _response(inputs: Inputs, options: PixelOptions, region: Region) -> list[NDArray[np.void]]:
+def _response(inputs: Inputs, options: PixelOptions, region: Region) -> list[Sought]:
     master = inputs.masters.flat
     if master is None:
         raise NotMeasured("needs flat frames")
     level = background(master.values, region)
-    low = np.float32(max(options.dim, options.dead) / 100)
-    high = np.float32(options.bright / 100)
-    rows, columns = outside(master.values, level.place, level.middle * low, level.middle * high)
-    local = level.at(rows, columns, level.middle)
-    response = 100 * master.values[rows, columns] / local
-    error = 100 * master.uncertainty[rows, columns] / local
     image = _stack_image(inputs, master.stack)
     typical = 100 * _typical_error(inputs, image, region) / float(_level(inputs, image, region))
-    error = np.maximum(error, typical)
-    kinds = np.where(
-        response < options.dead, "dead", np.where(response < options.dim, "dim", "bright")
-    )
-    limit = {"dead": options.dead, "dim": options.dim, "bright": options.bright}
-    bounds = np.array([limit[kind] for kind in kinds])
-    past = np.where(kinds == "bright", response - bounds, bounds - response)
-    points = _points("dim", rows, columns, response, error, "%", past)
-    points["kind"] = kinds
-    points["significance"] = np.abs(response - 100) / error
-    return [points[points["significance"] >= options.significance]]
+    found = []
+    for part, sign in ((LOW, -1.0), (HIGH, 1.0)):
+
+        def past(
+            reach: float, sign: float = sign
+        ) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
+            bound = level.middle * np.float32((100.0 + sign * reach) / 100)
+            open_side = np.full_like(level.middle, -sign * np.inf)
+            return (bound, open_side) if sign < 0 else (open_side, bound)
+
+        threshold = abs(nearest_threshold(part, options, 0.0) - 100.0)
+        rows, columns, reach = _beyond(
+            master.values,
+            level.place,
+            past,
+            deep=KEPT_FROM[part] * threshold,
+            needed=threshold - NEAR * typical,
+            least=options.significance * typical,
+        )
+        local = level.at(rows, columns, level.middle)
+        value = 100 * master.values[rows, columns] / local
+        error = np.maximum(100 * master.uncertainty[rows, columns] / local, typical)
+        found.append(
+            Sought(
+                part,
+                rows,
+                columns,
+                value.astype(np.float32),
+                error.astype(np.float32),
+                0.0,
+                typical,
+                100.0 + sign * reach,
+            )
+        )
+    return found
 
 
-def _offset(inputs: Inputs, options: PixelOptions, region: Region) -> list[NDArray[np.void]]:
+def _offset(inputs: Inputs, options: PixelOptions, region: Region) -> list[Sought]:
     image = inputs.reduced.bias
     if image is None or image.frames < 2:
         raise NotMeasured("needs two bias frames or more")
     gain = inputs.measured("conversion_gain", region.scope).value
     level = background(image.mean, region)
-    noise = np.sqrt(inputs.reduced.noise[region.scope].read) * gain
-    limit = 10 * noise if options.offset is None else options.offset
-    reach = np.float32(max(limit, options.significance * noise / np.sqrt(image.frames)) / gain)
-    rows, columns = outside(image.mean, level.place, level.middle - reach, level.middle + reach)
+    noise = float(np.sqrt(inputs.reduced.noise[region.scope].read) * gain)
+    typical = noise / float(np.sqrt(image.frames))
+
+    def past(reach: float) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
+        by = np.float32(reach / gain)
+        return level.middle - by, level.middle + by
+
+    threshold = nearest_threshold(OFFSET, options, 10 * noise)
+    rows, columns, reach = _beyond(
+        image.mean,
+        level.place,
+        past,
+        deep=KEPT_FROM[OFFSET] * threshold,
+        needed=threshold - NEAR * typical,
+        least=options.significance * typical,
+    )
     value = (image.mean[rows, columns] - level.at(rows, columns, level.middle)) * gain
     error = _errors(inputs, image, region, rows, columns) * gain
-    points = _points("offset", rows, columns, value, error, "electron", np.abs(value) - limit)
-    points["significance"] = np.abs(value) / error
-    return [points[points["significance"] >= options.significance]]
+    return [
+        Sought(
+            OFFSET,
+            rows,
+            columns,
+            value.astype(np.float32),
+            error.astype(np.float32),
+            10 * noise,
+            typical,
+            reach,
+        )
+    ]
 
 
-def _noise(inputs: Inputs, options: PixelOptions, region: Region) -> list[NDArray[np.void]]:
+def _beyond(
+    image: NDArray[np.float32],
+    place: Lattice,
+    past: Callable[[float], tuple[NDArray[np.float32], NDArray[np.float32]]],
+    *,
+    deep: float,
+    needed: float,
+    least: float,
+) -> tuple[NDArray[np.int32], NDArray[np.int32], float]:
+    """Pixels that depart by more than ``deep``, or than ``needed`` where those are too many.
+
+    ``past(reach)`` gives the lower and upper limits for a departure. Below ``least`` no departure
+    is significant, so that what is complete to there is complete. Returns rows, columns and the
+    departure beyond which all are told.
+    """
+    wanted = min(deep, needed)
+    found = few_outside(image, place, *past(max(wanted, least)), most=MANY)
+    if found is None:
+        wanted = needed
+        found = outside(image, place, *past(max(wanted, least)))
+    return *found, 0.0 if wanted <= least else wanted
+
+
+def _points(sought: Sought, options: PixelOptions) -> list[NDArray[np.void]]:
+    """POINT arrays of the kinds that the pixels may be."""
+    value, error = sought.value.astype(np.float64), sought.error.astype(np.float64)
+    found = []
+    for one in judged(
+        sought.part, value, error, options, automatic=sought.automatic, typical=sought.typical
+    ):
+        points = np.zeros(len(one.places), POINT)
+        points["kind"], points["unit"] = one.kind, UNITS[sought.part]
+        points["row"], points["column"] = sought.rows[one.places], sought.columns[one.places]
+        points["value"], points["uncertainty"] = value[one.places], error[one.places]
+        points["significance"] = significance(sought.part, value, error)[one.places]
+        points["probability"] = one.probability
+        found.append(points)
+    return found
+
+
+def _kept(sought: Sought, region: int, options: PixelOptions) -> Kept:
+    """The significant pixels, as many of the farthest as are kept."""
+    apart = np.abs(sought.value - np.float32(NEUTRAL[sought.part]))
+    chosen = np.flatnonzero(apart >= options.significance * sought.error)
+    reach = sought.reach
+    if len(chosen) > KEPT:
+        order = chosen[np.argsort(-apart[chosen], kind="stable")]
+        sign = -1.0 if sought.part == LOW else 1.0
+        reach = NEUTRAL[sought.part] + sign * float(apart[order[KEPT]])
+        chosen = np.sort(order[:KEPT])
+    pixels = np.zeros(len(chosen), CANDIDATE)
+    pixels["part"], pixels["region"] = sought.part, region
+    pixels["row"], pixels["column"] = sought.rows[chosen], sought.columns[chosen]
+    pixels["value"], pixels["uncertainty"] = sought.value[chosen], sought.error[chosen]
+    return Kept(pixels, (sought.part, region, sought.automatic, sought.typical, reach))
+
+
+def _noise(inputs: Inputs, options: PixelOptions, region: Region) -> NDArray[np.void]:
     images = [i for i in (inputs.reduced.bias, *inputs.reduced.darks) if i is not None]
     images = [image for image in images if image.frames >= LEAST_FRAMES]
     if not images:
@@ -209,25 +332,12 @@ def _noise(inputs: Inputs, options: PixelOptions, region: Region) -> list[NDArra
     error = noise / np.sqrt(2 * degrees)
     signal = np.maximum(image.mean[rows, columns] - model.bias_level, 0)
     limit = options.noisy * np.sqrt(model.read + model.slope * signal) * gain
-    return [_points("noisy", rows, columns, noise, error, "electron", noise - limit)]
-
-
-def _points(
-    kind: str,
-    rows: NDArray[np.int32],
-    columns: NDArray[np.int32],
-    value: NDArray[np.float64],
-    error: NDArray[np.float64],
-    unit: str,
-    past: NDArray[np.float64],
-) -> NDArray[np.void]:
-    """POINT rows; ``past`` is how far each value is beyond its threshold."""
     points = np.zeros(len(rows), POINT)
-    points["kind"], points["unit"] = kind, unit
+    points["kind"], points["unit"] = "noisy", "electron"
     points["row"], points["column"] = rows, columns
-    points["value"], points["uncertainty"] = value, error
-    points["significance"] = value / error
-    points["probability"] = ndtr(past / error)
+    points["value"], points["uncertainty"] = noise, error
+    points["significance"] = noise / error
+    points["probability"] = ndtr((noise - limit) / error)
     return points
 
 

@@ -1,12 +1,13 @@
 """The form that every finder of defects has: inputs and options in, candidates out."""
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from sensorgrade.defects.candidates import CANDIDATE, REACH
 from sensorgrade.measure.stage import Inputs
 
 # A pixel that may be past a threshold. ``value`` is its departure in ``unit``, ``significance``
@@ -59,12 +60,15 @@ class Line:
 class Found:
     """What one finder found; ``points`` is a POINT array.
 
-    ``lacking`` maps a count's name to the sentence saying why it could not be made.
+    ``candidates`` and ``reaches`` are CANDIDATE and REACH arrays: what the finder keeps for other
+    thresholds. ``lacking`` maps a count's name to the sentence saying why it could not be made.
     """
 
     points: NDArray[np.void]
     lines: tuple[Line, ...]
     lacking: dict[str, str]
+    candidates: NDArray[np.void] = field(default_factory=lambda: np.empty(0, CANDIDATE))
+    reaches: NDArray[np.void] = field(default_factory=lambda: np.empty(0, REACH))
 
 
 @dataclass(frozen=True, slots=True)
