@@ -113,3 +113,16 @@ class TestWithStages:
         assert run("draft", str(source)).output == out.read_text(encoding="utf-8")
         code, _, err = status(capsys, "draft", str(source), "--out", str(out))
         assert code == 2 and "exists already" in err
+
+
+def test_several_mistakes_are_counted_at_the_end(capsys, tmp_path):
+    path = tmp_path / "mine.yaml"
+    path.write_text("name: a\nsensor: {technology: tube, pixel_pitch: 15}\nstagess: {}\n")
+    code, out, err = status(capsys, "validate", str(path))
+    assert (code, out) == (2, "")
+    *mistakes, last = err.splitlines()
+    assert last == "3 mistakes; nothing was done"
+    assert len(mistakes) == 3
+    path.write_text("name: a\nsensor: {technology: ccd, pixel_pitch: 15}\n")
+    _, _, err = status(capsys, "validate", str(path))
+    assert len(err.splitlines()) == 1

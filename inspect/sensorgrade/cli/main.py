@@ -7,7 +7,7 @@ from typing import Any
 import click
 
 from sensorgrade import __version__
-from sensorgrade.errors import DeviceError, FrameError, SensorgradeError
+from sensorgrade.errors import DeviceError, FrameError, RecipeError, SensorgradeError
 
 # name: module of cli/ whose ``command`` is the click command
 COMMANDS = {
@@ -85,6 +85,8 @@ def main(arguments: list[str] | None = None) -> Any:
         sys.exit(NOT_INSPECTED)
     except SensorgradeError as error:
         click.echo(f"sensorgrade: {error}", err=True)
+        if isinstance(error, RecipeError) and len(error.problems) > 1:
+            click.echo(f"{len(error.problems)} mistakes; nothing was done", err=True)
         sys.exit(WRONG_REQUEST)
     except OSError as error:  # a full disk, a folder without permission
         from sensorgrade.recipe.document import printable
