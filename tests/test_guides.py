@@ -20,8 +20,9 @@ from sensorgrade.defects.bits import BITS
 from sensorgrade.errors import NotMeasured, RequestError
 from sensorgrade.guides.topics import FOLDER, TOPICS, guide_text, guide_titles
 from sensorgrade.measure.stage import Stage
-from sensorgrade.recipe.load import parse_recipe
+from sensorgrade.recipe.load import parse_limits, parse_recipe
 from sensorgrade.recipe.vocabulary import Vocabulary
+from sensorgrade.stages import vocabulary
 
 BLOCK = re.compile(r"^```(\w+)\n(.*?)^```$", re.MULTILINE | re.DOTALL)
 
@@ -60,7 +61,11 @@ def test_limits_shown_in_the_guide_are_right(block):
         "name: a\nsensor: {technology: ccd, pixel_pitch: 9 um, outputs: {left: {}, right: {}}}\n"
         "stages: {read_noise: , hot_pixels: }\n"
     )
-    parse_recipe(head + block, VOCABULARY, path="guide")
+    if block.startswith("stages:"):
+        recipe = parse_recipe(head.replace("hot_pixels", "pixels"), vocabulary(), path="run")
+        assert parse_limits(block, vocabulary(), recipe=recipe, path="guide") != recipe
+    else:
+        parse_recipe(head + block, VOCABULARY, path="guide")
 
 
 def test_the_mask_s_bits_are_told_as_they_are():

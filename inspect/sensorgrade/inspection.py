@@ -137,6 +137,7 @@ def inspect_device(
             versions=versions(),
         ),
         taken=min((frame.time for frame in ready.frames if frame.time is not None), default=None),
+        candidates=defects.candidates,
     )
     return Inspection(result, masters, defects, given.results)
 

@@ -4,9 +4,12 @@ A stage listed here is known to recipes, their schema, limits, grading, ledger a
 of one's own come in through the entry point group ``sensorgrade.stages``.
 """
 
+from dataclasses import fields
 from importlib.metadata import entry_points
 
+from sensorgrade.defects.clusters import ClusterOptions
 from sensorgrade.defects.table import FINDERS
+from sensorgrade.defects.thresholds import MOVABLE
 from sensorgrade.measure import (
     bias_drift,
     bias_level,
@@ -49,6 +52,12 @@ MEASURING: tuple[Stage, ...] = (
     crosstalk.STAGE,
 )
 
+# What inspections keep enough for to count again without frames.
+THRESHOLDS = {
+    "pixels": tuple(kind for kinds in MOVABLE.values() for kind in kinds),
+    "clusters": tuple(field.name for field in fields(ClusterOptions)),
+}
+
 
 def measuring_stages() -> tuple[Stage, ...]:
     """The stages of this table, then those that other packages bring, by name."""
@@ -75,4 +84,5 @@ def vocabulary() -> Vocabulary:
         | {count.name: count.meaning for finder in FINDERS for count in finder.counts},
         counts=tuple(dict.fromkeys(count.name for finder in FINDERS for count in finder.counts)),
         sources=sources,
+        thresholds=THRESHOLDS,
     )

@@ -12,6 +12,7 @@ from sensorgrade.defects.find import find_defects
 from sensorgrade.defects.lines import LineOptions
 from sensorgrade.defects.ranking import RANK, ranked
 from sensorgrade.defects.recount import recounted
+from sensorgrade.defects.table import FINDERS
 from sensorgrade.defects.telegraph import TelegraphOptions
 from sensorgrade.defects.thresholds import PixelOptions
 from sensorgrade.recipe.model import OutputOptions, Section, Zone
@@ -25,6 +26,7 @@ TWO = replace(
     },
 )
 ZONES = {"centre": Zone(circle=(128, 128, 60)), "frame": Zone(border=20)}
+NAMES = [count.name for finder in FINDERS for count in finder.counts]
 RECIPE = PixelOptions(hot=5.0, dim=80.0, bright=120.0, offset=60.0)
 MOVED = [
     {},
@@ -79,7 +81,7 @@ def kept(devices):
 @pytest.mark.parametrize("moved", MOVED, ids=str)
 def test_a_recount_says_what_an_inspection_at_the_thresholds_says(devices, kept, moved):
     asked = replace(RECIPE, **moved)
-    found = recounted(kept, pixels=asked, clusters=ClusterOptions(), zones=ZONES)
+    found = recounted(kept, pixels=asked, clusters=ClusterOptions(), zones=ZONES, names=NAMES)
     changed = 0
     for device, recount in zip(devices, found, strict=True):
         assert recount.lacking == {}
@@ -97,7 +99,7 @@ def test_a_recount_says_what_an_inspection_at_the_thresholds_says(devices, kept,
 
 def test_clusters_can_be_joined_otherwise(devices, kept):
     asked = ClusterOptions(distance=2, smallest=2)
-    found = recounted(kept, pixels=RECIPE, clusters=asked, zones={})
+    found = recounted(kept, pixels=RECIPE, clusters=asked, zones={}, names=NAMES)
     for device, recount in zip(devices, found, strict=True):
         inspected = find_defects(device, options(RECIPE, asked), {})
         for wanted in ("clusters", "hot_pixels"):
@@ -110,7 +112,7 @@ def test_clusters_can_be_joined_otherwise(devices, kept):
 
 def test_what_was_not_kept_is_said_and_not_guessed(kept):
     (found, *_) = recounted(
-        kept, pixels=replace(RECIPE, hot=1.0), clusters=ClusterOptions(), zones={}
+        kept, pixels=replace(RECIPE, hot=1.0), clusters=ClusterOptions(), zones={}, names=NAMES
     )
     assert set(found.lacking) == {"hot_pixels", "clusters"}
     sentence = found.lacking["hot_pixels"]
@@ -123,10 +125,12 @@ def test_where_there_are_too_many_the_farthest_are_kept(devices, monkeypatch):
     few = find_defects(devices[0], options(RECIPE), ZONES).candidates
     dark = few.pixels[few.pixels["part"] == 0]
     assert 12 < len(dark) <= 24
-    (at_threshold,) = recounted([few], pixels=RECIPE, clusters=ClusterOptions(), zones={})
+    (at_threshold,) = recounted(
+        [few], pixels=RECIPE, clusters=ClusterOptions(), zones={}, names=NAMES
+    )
     assert "hot_pixels" in at_threshold.lacking
     high = replace(RECIPE, hot=12.0)
-    (above,) = recounted([few], pixels=high, clusters=ClusterOptions(), zones={})
+    (above,) = recounted([few], pixels=high, clusters=ClusterOptions(), zones={}, names=NAMES)
     exact = find_defects(devices[0], options(high), {})
     assert "hot_pixels" not in above.lacking
     numbers = [

@@ -6,6 +6,7 @@ import pytest
 
 from lot.results import invented_result
 from sensorgrade.errors import RequestError
+from sensorgrade.lot.database import NAME, SCHEMA
 from sensorgrade.lot.failure import Failure
 from sensorgrade.lot.fingerprint import Fingerprint
 from sensorgrade.lot.ledger import Ledger, read_ledger, write_ledger
@@ -200,3 +201,22 @@ def test_every_table_and_column_is_asked_about_with_an_index(tmp_path):
         )
         assert "USING" in plan and "INDEX" in plan, (question, plan)
     connection.close()
+
+
+def test_a_ledger_of_the_first_form_is_brought_up_to_date_and_keeps_its_devices(tmp_path):
+    connection = sqlite3.connect(tmp_path / NAME)
+    connection.executescript((SCHEMA / "1.sql").read_text() + "PRAGMA user_version = 1;")
+    connection.execute("INSERT INTO runs VALUES (1, '', NULL, NULL, '', '', '', '', '', 1, 1, 1)")
+    connection.execute(
+        "INSERT INTO devices (run, serial, folder, outcome, decision, recipe, recipe_sha256,"
+        " versions, described, state, finished, seconds) VALUES"
+        " (1, 'S1', 'S1', 'inspected', 'accept', '', '', '{}', '', '', '', 1)"
+    )
+    connection.commit()
+    connection.close()
+    with pytest.raises(RequestError, match="ledger of form 1, this program reads 2"):
+        read_ledger(tmp_path)
+    with write_ledger(tmp_path) as ledger:
+        kept(begun(tmp_path), 2)
+        assert [result.serial for result in ledger.results()] == ["S00002", "S1"]
+        assert list(ledger.select("SELECT count(*) FROM candidates")) == [(0,)]

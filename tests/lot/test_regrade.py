@@ -107,7 +107,7 @@ def test_a_limit_on_one_output_refers_to_the_runs_outputs(run):
 
 def test_what_only_frames_could_answer_is_refused(run):
     text = "stages: {read_noise: {pairs: 3}}\ngrades: {a: {read_noise: <= 6 electron}}\n"
-    with pytest.raises(RecipeError, match="stages: a file of limits holds grades"):
+    with pytest.raises(RecipeError, match=r"stages\.read_noise\.pairs: needs the frames"):
         regrade(run, limits=limits(run, text), vocabulary=VOCABULARY)
 
 

@@ -39,6 +39,14 @@ def test_a_whole_recipe_serves_as_well(recipe):
     assert parse_limits(other, VOCABULARY, recipe=recipe, path="b.yaml") == expected
 
 
+def test_a_threshold_alone_moves_and_leaves_the_rest(recipe):
+    text = "stages: {hot_pixels: {threshold: 3 electron/s}}"
+    found = parse_limits(text, VOCABULARY, recipe=recipe, path="b")
+    assert found.stages["hot_pixels"] == replace(recipe.stages["hot_pixels"], threshold=3.0)
+    assert found.grades == recipe.grades
+    assert found.stages["read_noise"] == recipe.stages["read_noise"]
+
+
 def test_limits_refer_to_the_zones_and_outputs_of_the_recipe(recipe):
     text = 'grades: {a: {read_noise: {limit: "<= 2 electron", zone: centre, output: left}}}'
     (limit,) = parse_limits(text, VOCABULARY, recipe=recipe, path="b").grades[0].limits
@@ -54,11 +62,17 @@ def test_limits_refer_to_the_zones_and_outputs_of_the_recipe(recipe):
              " whose limits it meets)"],
         ),
         (
-            "grades: {a: {dead_pixels: <= 3}}\nstages: {}",
+            "grades: {a: {dead_pixels: <= 3}}\nzones: {}",
             ["b:1  grades.a.dead_pixels: nothing in this recipe measures it; put flat_pixels or"
              " dark_pixels under stages",
-             "b:2  stages: a file of limits holds grades, decision or lot; a whole recipe starts"
-             " with name and sensor"],
+             "b:2  zones: a file of limits holds grades, decision, lot or stages; a whole recipe"
+             " starts with name and sensor"],
+        ),
+        (
+            "stages: {read_noise: {pairs: 3}, hot_pixels: {threshold: 3 electron/s, gain: 2}}",
+            ["b:1  stages.read_noise.pairs: needs the frames, inspect again",
+             "b:1  stages.hot_pixels.gain: needs the frames, inspect again; without them threshold"
+             " can move"],
         ),
     ],
 )  # fmt: skip

@@ -58,4 +58,5 @@ VOCABULARY = Vocabulary(
         "hot_pixels": ("hot_pixels",),
         "dead_pixels": ("flat_pixels", "dark_pixels"),
     },
+    thresholds={"hot_pixels": ("threshold",)},
 )

@@ -22,7 +22,7 @@ if TYPE_CHECKING:
     "--limits",
     required=True,
     type=click.Path(path_type=Path),
-    help="Recipe, or a file with its grades, decision and lot alone.",
+    help="Recipe, or a file of grades, decision, lot and thresholds (stages: pixels) alone.",
 )
 @click.option("--grade", "grade_name", help="Grade to examine; the lowest if not given.")
 @click.option(
@@ -53,7 +53,7 @@ def command(
     examined = None
     if recipe.grades:
         examined = what_if(
-            regraded.stored.devices,
+            regraded.devices,
             recipe=recipe,
             grade_name=grade_name or recipe.grades[-1].name,
             wanted=accept,
@@ -69,6 +69,11 @@ def command(
 
 
 def _print_grades(regraded: "Regraded") -> None:
+    from sensorgrade.lot.recounting import moved_text
+
+    if regraded.moved:
+        moved = ", ".join(moved_text(regraded.recipe, regraded.moved))
+        click.echo(f"Counted again from the pixels that were kept: {moved}")
     devices = len(regraded.graded)
     undecided = sum(one.decision == "undecided" for one in regraded.graded)
     rejected = sum(one.decision == "reject" for one in regraded.graded)
@@ -127,6 +132,7 @@ def _percent(share: float) -> str:
 
 def _document(regraded: "Regraded", examined: "WhatIf | None") -> dict[str, Any]:
     return {
+        "moved": list(regraded.moved),
         "devices": [
             {
                 "serial": device.serial,

@@ -4,7 +4,7 @@ The pixels go the way they go in an inspection: judged, ranked, joined to cluste
 devices of a lot go it together.
 """
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass
 from itertools import groupby
 
@@ -76,17 +76,20 @@ def recounted(
     pixels: PixelOptions,
     clusters: ClusterOptions | None,
     zones: Mapping[str, Zone],
+    names: Collection[str],
 ) -> list[Recount]:
-    """Counts of every device at the thresholds of ``pixels``, clusters joined as asked.
+    """The counts in ``names`` of every device at the thresholds of ``pixels``.
 
-    They equal those of an inspection with these options. ``significance`` and ``noisy`` must be
-    those of the inspection: what they left out was not kept.
+    Clusters are joined as ``clusters`` says, None where the recipe does not ask for them. Counts
+    equal those of an inspection with these options. ``significance`` and ``noisy`` must be those of
+    the inspection: what they left out was not kept.
     """
+    kinds = {name: kinds for name, kinds in counted(pixels, clusters).items() if name in names}
     found: list[Recount] = []
     for _, alike in groupby(candidates, key=lambda one: one.layout):
         group = list(alike)
         for start in range(0, len(group), TOGETHER):
-            found += _group(group[start : start + TOGETHER], pixels, clusters, zones)
+            found += _group(group[start : start + TOGETHER], pixels, clusters, zones, kinds)
     return found
 
 
@@ -95,6 +98,7 @@ def _group(
     pixels: PixelOptions,
     clusters: ClusterOptions | None,
     zones: Mapping[str, Zone],
+    kinds: Mapping[str, list[int]],
 ) -> list[Recount]:
     """As `recounted`, for devices of one layout."""
     layout = group[0].layout
@@ -106,7 +110,7 @@ def _group(
     parts = [traps, entries]
     if clusters is not None:
         parts = [traps, *_clustered(entries, layout, clusters)]
-    counts = _counts(_joined(parts), len(group), layout, zones, pixels, clusters)
+    counts = _counts(_joined(parts), len(group), layout, zones, kinds)
     return [
         Recount(tuple(of_device), lacking)
         for of_device, lacking in zip(counts, _lacking(group, layout, pixels), strict=True)
@@ -187,8 +191,7 @@ def _counts(
     devices: int,
     layout: Layout,
     zones: Mapping[str, Zone],
-    pixels: PixelOptions,
-    clusters: ClusterOptions | None,
+    kinds: Mapping[str, list[int]],
 ) -> list[list[DefectCount]]:
     """Counts for each device, its outputs and zones."""
     scopes: list[tuple[str, NDArray[np.bool_] | None]] = [("device", None)]
@@ -204,8 +207,8 @@ def _counts(
     sure = entries.probability >= CERTAIN
     doubt = entries.probability * (1.0 - entries.probability)
     found: list[list[DefectCount]] = [[] for _ in range(devices)]
-    for name, kinds in counted(pixels, clusters).items():
-        mine = np.isin(entries.kind, kinds)
+    for name, of_name in kinds.items():
+        mine = np.isin(entries.kind, of_name)
         for scope, inside in scopes:
             here = np.flatnonzero(mine if inside is None else mine & inside)
             device = entries.device[here]

@@ -7,7 +7,7 @@ from sensorgrade.errors import RequestError
 
 NAME = "lot.sqlite"
 SCHEMA = Path(__file__).with_name("schema")
-VERSION = 1  # the newest script in schema/; script N takes a ledger from version N - 1 to N
+VERSION = 2  # the newest script in schema/; script N takes a ledger from version N - 1 to N
 BUSY = 30.0  # s to wait for another connection
 
 

@@ -24,6 +24,7 @@ from sensorgrade.grading.what_if import (
     costs,
     tightest,
 )
+from sensorgrade.lot.recounting import moved_thresholds, with_counts_at
 from sensorgrade.lot.stored import StoredLot, stored_lot
 from sensorgrade.recipe.load import load_limits, parse_recipe
 from sensorgrade.recipe.model import Recipe
@@ -32,10 +33,16 @@ from sensorgrade.recipe.vocabulary import Vocabulary
 
 @dataclass(frozen=True, slots=True)
 class Regraded:
-    """The lot graded again; ``stored`` has each device's grade and decision from the run."""
+    """The lot graded again; ``stored`` has each device's grade and decision from the run.
+
+    ``devices`` are what was graded: the run's readings, with the counts of pixels at the thresholds
+    named in ``moved``.
+    """
 
     recipe: Recipe
     stored: StoredLot
+    moved: tuple[str, ...]
+    devices: tuple[DeviceReadings, ...]
     graded: tuple[Graded, ...]
     yields: tuple[GradeYield, ...]
     lot: LotDecision | None
@@ -53,15 +60,18 @@ class Regraded:
 
 
 def regrade(folder: Path, *, limits: Path, vocabulary: Vocabulary) -> Regraded:
-    """Grade the devices of a run's ledger against the limits in a file.
+    """Grade the devices of a run's ledger against the limits in a file, no frame read.
+
+    Thresholds of pixels and the joining of clusters may differ from the run's: counts are then made
+    again from the pixels that inspections keep.
 
     Parameters
     ----------
     folder : Path
         Where the run wrote to.
     limits : Path
-        A whole recipe, or only its ``grades``, ``decision`` and ``lot``; what it leaves out is
-        as in the run's recipe.
+        A whole recipe, or only its ``grades``, ``decision``, ``lot`` and thresholds under
+        ``stages``; what it leaves out is as in the run's recipe.
 
     Raises
     ------
@@ -69,11 +79,16 @@ def regrade(folder: Path, *, limits: Path, vocabulary: Vocabulary) -> Regraded:
         No ledger, an unreadable file, or mistakes in it, one line each.
     """
     run = stored_lot(folder, names=())
-    recipe = load_limits(
-        limits, vocabulary, recipe=parse_recipe(run.recipe_text, vocabulary, path=run.recipe)
-    )
+    inspected = parse_recipe(run.recipe_text, vocabulary, path=run.recipe)
+    recipe = load_limits(limits, vocabulary, recipe=inspected)
+    moved = moved_thresholds(inspected.stages, recipe.stages)
     names = {limit.name for level in recipe.grades for limit in level.limits}
-    stored = stored_lot(folder, names=names | {TEMPERATURE, ENERGY})
+    stored = stored_lot(
+        folder, names=names | {TEMPERATURE, ENERGY, "hot_pixels"}, with_candidates=bool(moved)
+    )
+    devices = stored.devices
+    if moved:
+        devices = with_counts_at(stored, recipe=recipe, moved=moved, names=names)
     graded = tuple(
         grade(
             device.measurements,
@@ -82,12 +97,14 @@ def regrade(folder: Path, *, limits: Path, vocabulary: Vocabulary) -> Regraded:
             recipe=recipe,
             explain_accepted=False,
         )
-        for device in stored.devices
+        for device in devices
     )
     serials = [device.serial for device in stored.devices]
     return Regraded(
         recipe=recipe,
         stored=stored,
+        moved=moved,
+        devices=devices,
         graded=graded,
         yields=yields(graded, recipe=recipe),
         lot=lot_decision(serials, graded, plan=recipe.lot),

@@ -1,7 +1,8 @@
 """All that one inspection says of one device, as it goes to result.json and the ledger."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
+from sensorgrade.defects.candidates import Candidates
 from sensorgrade.defects.defect import DefectCount
 from sensorgrade.grading.decision import Graded
 from sensorgrade.measurement import Finding, Measurement
@@ -32,7 +33,8 @@ class DeviceResult:
 
     ``folder`` is the safe folder name made from ``serial``. ``not_measured`` maps a stage to
     the sentence saying what it lacked. ``taken`` is when the earliest frame was started [s since
-    1970, UTC], None when no frame says; it puts a lot in the order of time.
+    1970, UTC], None when no frame says; it puts a lot in the order of time. ``candidates`` are the
+    pixels that other thresholds may call defects; they go to the ledger only, for `regrade`.
     """
 
     serial: str
@@ -48,3 +50,4 @@ class DeviceResult:
     graded: Graded
     provenance: Provenance
     taken: float | None = None
+    candidates: Candidates | None = field(default=None, compare=False, repr=False)

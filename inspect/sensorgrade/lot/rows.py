@@ -10,6 +10,7 @@ from typing import Any, TypeVar
 
 from sensorgrade.defects.defect import DefectCount
 from sensorgrade.grading.decision import Graded, LimitResult
+from sensorgrade.lot.candidate_rows import insert_candidates
 from sensorgrade.lot.failure import Failure
 from sensorgrade.lot.result import DeviceResult, InputFile, Provenance
 from sensorgrade.measurement import Finding, Measurement
@@ -57,6 +58,8 @@ def insert_details(connection: sqlite3.Connection, device: int, result: DeviceRe
     }
     for table, entries in rows.items():
         insert_rows(connection, table, device, list(entries))
+    if result.candidates is not None:
+        insert_candidates(connection, device, result.candidates)
 
 
 def insert_rows(

@@ -6,9 +6,11 @@ from collections.abc import Iterable
 from dataclasses import dataclass
 from pathlib import Path
 
+from sensorgrade.defects.candidates import Candidates
 from sensorgrade.defects.defect import DefectCount
 from sensorgrade.errors import RequestError
 from sensorgrade.grading.held import DeviceReadings
+from sensorgrade.lot.candidate_rows import select_candidates
 from sensorgrade.lot.database import open_for_reading
 from sensorgrade.measurement import Finding, Measurement
 
@@ -19,6 +21,7 @@ class StoredLot:
 
     ``folders`` are the devices' own, where their files lie. ``recipe`` and ``recipe_text`` are
     those of the last run; ``failed`` are the serials of devices that could not be inspected.
+    ``candidates`` are the pixels kept for other thresholds, None where there are none.
     """
 
     devices: tuple[DeviceReadings, ...]
@@ -28,9 +31,12 @@ class StoredLot:
     recipe: str
     recipe_text: str
     failed: tuple[str, ...]
+    candidates: tuple[Candidates | None, ...]
 
 
-def stored_lot(folder: Path, *, names: Iterable[str] | None = None) -> StoredLot:
+def stored_lot(
+    folder: Path, *, names: Iterable[str] | None = None, with_candidates: bool = False
+) -> StoredLot:
     """Read the ledger of a run.
 
     Parameters
@@ -39,6 +45,8 @@ def stored_lot(folder: Path, *, names: Iterable[str] | None = None) -> StoredLot
         Where the run wrote to.
     names : iterable of str, optional
         Measurements and counts to read; all of them when not given.
+    with_candidates : bool
+        Whether to read the pixels too that were kept for other thresholds.
 
     Raises
     ------
@@ -62,6 +70,7 @@ def stored_lot(folder: Path, *, names: Iterable[str] | None = None) -> StoredLot
         measurements = _measurements(connection, names)
         counts = _counts(connection, names)
         findings = _findings(connection)
+        candidates = select_candidates(connection) if with_candidates else {}
     finally:
         connection.close()
     return StoredLot(
@@ -80,6 +89,7 @@ def stored_lot(folder: Path, *, names: Iterable[str] | None = None) -> StoredLot
         recipe=run[0],
         recipe_text=run[1],
         failed=tuple(serial for (serial,) in failed),
+        candidates=tuple(candidates.get(device) for device, *_ in rows),
     )
 
 

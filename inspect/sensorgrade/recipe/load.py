@@ -29,7 +29,7 @@ TOP = {
     "grades": "Limits for each grade, best first; a device takes the first whose limits it meets",
 }
 REQUIRED = ("name", "sensor")
-LIMIT_KEYS = ("grades", "decision", "lot")
+LIMIT_KEYS = ("grades", "decision", "lot", "stages")
 WORDS = ("bias", "dark", "flat", "x-ray", "pump", "ignore")  # what frames.kinds translates into
 NAME = re.compile(r"[^\W_][\w .+-]{0,30}")  # outputs and zones: no comma, they join scopes
 
@@ -136,8 +136,9 @@ def parse_recipe(text: str, vocabulary: Vocabulary, *, path: str) -> Recipe:
 def load_limits(path: Path, vocabulary: Vocabulary, *, recipe: Recipe) -> Recipe:
     """``recipe`` with the grades of another file: a whole recipe, or one of limits alone.
 
-    A file of limits alone has the keys grades, decision and lot; what it leaves out stays as it
-    is in ``recipe``, whose sensor, zones and stages the limits refer to.
+    A file of limits alone has the keys grades, decision, lot and stages, the last with nothing
+    but thresholds that can move without frames; what it leaves out stays as it is in ``recipe``,
+    whose sensor, zones and stages the limits refer to.
 
     Raises
     ------
@@ -161,8 +162,9 @@ def parse_limits(text: str, vocabulary: Vocabulary, *, recipe: Recipe, path: str
                 f"a file of limits holds {alternatives(LIMIT_KEYS)}; a whole recipe starts with"
                 " name and sensor",
             )
-    if "grades" not in root.entries:
+    if "grades" not in root.entries and "stages" not in root.entries:
         problems.add(root.line, "", f"grades is missing ({TOP['grades']})")
+    stages = _moved(root, vocabulary, recipe, problems)
     graded = _grades(
         root, context(vocabulary, frozenset(recipe.stages), recipe.sensor, recipe.zones), problems
     )
@@ -172,7 +174,8 @@ def parse_limits(text: str, vocabulary: Vocabulary, *, recipe: Recipe, path: str
         raise problems.error()
     return replace(
         recipe,
-        grades=graded,
+        stages=stages,
+        grades=graded if "grades" in root.entries else recipe.grades,
         decision=decision if "decision" in root.entries else recipe.decision,
         lot=lot if "lot" in root.entries else recipe.lot,
         path=path,
@@ -238,6 +241,35 @@ def _stages(root: Mapping, vocabulary: Vocabulary, problems: Problems) -> dict[s
             continue
         read[name] = options(vocabulary.stages[name], stage.value, stage.line, where, problems)
     return read
+
+
+def _moved(
+    root: Mapping, vocabulary: Vocabulary, recipe: Recipe, problems: Problems
+) -> dict[str, Any]:
+    """The recipe's stages with the thresholds that a file of limits moves."""
+    moved = dict(recipe.stages)
+    written = _mapping(root, "stages")
+    for name, read in _stages(root, vocabulary, problems).items():
+        line, where = written.entries[name].line, joined("stages", name)
+        movable = vocabulary.thresholds.get(name, ())
+        if name not in recipe.stages:
+            problems.add(line, where, "was not inspected; only frames can tell, inspect again")
+            continue
+        keys = {
+            key: entry
+            for key, entry in _mapping(written, name).entries.items()
+            if hasattr(recipe.stages[name], key)
+            and not (isinstance(entry.value, Scalar) and entry.value.empty)
+        }
+        for key, entry in keys.items():
+            if key not in movable:
+                can = f"; without them {alternatives(movable)} can move" if movable else ""
+                sentence = f"needs the frames, inspect again{can}"
+                problems.add(entry.line, joined(where, key), sentence)
+        if read is not None:
+            given = {key: getattr(read, key) for key in keys if key in movable}
+            moved[name] = replace(recipe.stages[name], **given)
+    return moved
 
 
 def _zones(root: Mapping, problems: Problems) -> dict[str, Zone]:

@@ -1,6 +1,6 @@
 """What a recipe may name: the stages there are, and what limits can be set on."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 
 @dataclass(frozen=True, slots=True)
@@ -11,7 +11,8 @@ class Vocabulary:
     name to its unit ("electron", "%", ...) and ``meanings`` to a sentence. ``counts`` are the
     names of countable defects (hot_pixels, ...), without unit. ``sources`` maps each name that
     limits can be set on to the stages that yield it: at least one of them must be in a recipe
-    that sets such a limit.
+    that sets such a limit. ``thresholds`` names the options of stages that can move without
+    frames, from what inspections keep.
     """
 
     stages: dict[str, type]
@@ -19,3 +20,4 @@ class Vocabulary:
     meanings: dict[str, str]
     counts: tuple[str, ...]
     sources: dict[str, tuple[str, ...]]
+    thresholds: dict[str, tuple[str, ...]] = field(default_factory=dict)
