@@ -21,6 +21,7 @@ from sensorgrade.frames.decode import decoded
 from sensorgrade.frames.frame import DeviceFrames, Frame
 from sensorgrade.frames.geometry import geometry
 from sensorgrade.grading.grade import grade
+from sensorgrade.lot.collector import collector_rests
 from sensorgrade.lot.engine import LotOptions, LotOutcome, run_lot
 from sensorgrade.lot.fingerprint import file_sha256
 from sensorgrade.lot.ledger import Ledger
@@ -201,9 +202,10 @@ def inspect_lot(
         options=options,
         report=report,
     )
-    results, failures = ledger.results(), ledger.failures()
-    table = lot_csv(lot_columns(results, failures))
-    page = lot_page(results, failures=failures, recipe=recipe, name=ledger.folder.name)
+    results, failures = ledger.results(with_inputs=False), ledger.failures()
+    with collector_rests():
+        table = lot_csv(lot_columns(results, failures))
+        page = lot_page(results, failures=failures, recipe=recipe, name=ledger.folder.name)
     try:
         write_whole(ledger.folder / "lot.csv", table)
         write_whole(ledger.folder / "lot.html", page)

@@ -28,7 +28,7 @@ from sensorgrade.report.lot_page import lot_page
 from sensorgrade.stages import vocabulary
 recipe = load_recipe(find_recipe("demo"), vocabulary())
 with read_ledger(Path(sys.argv[1])) as ledger:
-    results, failures = ledger.results(), ledger.failures()
+    results, failures = ledger.results(with_inputs=False), ledger.failures()
 page = lot_page(results, failures=failures, recipe=recipe, name="year")
 Path(sys.argv[1], "lot.html").write_text(page)
 """
@@ -54,6 +54,7 @@ def filled(folder: Path, inspected: Path, devices: int) -> float:
 
     from sensorgrade.lot.fingerprint import Fingerprint
     from sensorgrade.lot.ledger import read_ledger, write_ledger
+    from sensorgrade.lot.stored import stored_lot
     from sensorgrade.recipe.library import find_recipe
     from sensorgrade.recipe.load import load_recipe
     from sensorgrade.stages import vocabulary
@@ -61,6 +62,7 @@ def filled(folder: Path, inspected: Path, devices: int) -> float:
     recipe = load_recipe(find_recipe("demo"), vocabulary())
     with read_ledger(inspected) as source:
         patterns = source.results()
+    kept = stored_lot(inspected, with_candidates=True).candidates
     rng = np.random.default_rng(1)
     folder.mkdir()
     with write_ledger(folder) as ledger:
@@ -77,6 +79,7 @@ def filled(folder: Path, inspected: Path, devices: int) -> float:
                 wafer=f"W{number // PER_WAFER:03d}",
                 die_row=place // 10,
                 die_column=place % 10,
+                candidates=kept[number % len(patterns)],
                 measurements=tuple(
                     replace(
                         one,

@@ -48,9 +48,15 @@ def grade(
         it is: limits missed come before those undecided; among the missed, those also missed in
         more of the lower grades first, then the farthest past the limit in proportion to it.
     """
+    return grade_known(
+        known(measurements, counts, findings), recipe=recipe, explain_accepted=explain_accepted
+    )
+
+
+def grade_known(of_device: Known, *, recipe: Recipe, explain_accepted: bool) -> Graded:
+    """As `grade`, from readings that are sorted for lookup already."""
     if not recipe.grades:
         return Graded(None, "ungraded", (NO_GRADES,), ())
-    of_device = known(measurements, counts, findings)
     results: list[LimitResult] = []
     met: str | None = None
     open_question = False

@@ -2,22 +2,13 @@
 
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
+from functools import cached_property
 
 from sensorgrade.defects.defect import DefectCount
 from sensorgrade.grading.selection import Reading, absent, by_name, combined, readings
 from sensorgrade.grading.temperature import at_temperature
 from sensorgrade.measurement import Finding, Measurement
 from sensorgrade.recipe.model import Limit, Recipe
-
-
-@dataclass(frozen=True, slots=True)
-class DeviceReadings:
-    """What grading knows of one device: values only, never frames."""
-
-    serial: str
-    measurements: tuple[Measurement, ...]
-    counts: tuple[DefectCount, ...]
-    findings: tuple[Finding, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -51,6 +42,21 @@ def known(
         for name in finding.undecides:
             barred.setdefault(name, []).append(finding)
     return Known(by_name(measurements, counts), barred)
+
+
+@dataclass(frozen=True)
+class DeviceReadings:
+    """What grading knows of one device: values only, never frames."""
+
+    serial: str
+    measurements: tuple[Measurement, ...]
+    counts: tuple[DefectCount, ...]
+    findings: tuple[Finding, ...] = ()
+
+    @cached_property
+    def known(self) -> Known:
+        """The same, sorted for lookup once for all that a lot is asked."""
+        return known(self.measurements, self.counts, self.findings)
 
 
 def held(limit: Limit, of_device: Known, *, recipe: Recipe) -> list[Held]:

@@ -11,7 +11,7 @@ from sensorgrade.defects.defect import DefectCount
 from sensorgrade.grading.capability import Capability, capability, robust_outlier_factor
 from sensorgrade.grading.conformity import guard_factor
 from sensorgrade.grading.decision import Graded, Outcome
-from sensorgrade.grading.held import DeviceReadings, held, known
+from sensorgrade.grading.held import DeviceReadings, held
 from sensorgrade.grading.interval import Interval, clopper_pearson, wilson
 from sensorgrade.grading.risk import Risks, global_risks
 from sensorgrade.grading.sampling_plan import SamplingPlan, drawn, standard_plan
@@ -107,21 +107,17 @@ def limit_statistics(
     twenty lots, in robust standard deviations; not looked for below 8 devices or where more than
     half of the values are equal.
     """
-    sorted_devices = [
-        (device.serial, known(device.measurements, device.counts, device.findings))
-        for device in devices
-    ]
     found = []
     for level in recipe.grades:
         for limit in level.limits:
             serials, scopes, values, doubts = [], [], [], []
             undecidable, counted = 0, False
-            for serial, of_device in sorted_devices:
-                for place in held(limit, of_device, recipe=recipe):
+            for device in devices:
+                for place in held(limit, device.known, recipe=recipe):
                     if place.why is not None or place.reading is None:
                         undecidable += 1
                         continue
-                    serials.append(serial)
+                    serials.append(device.serial)
                     scopes.append(place.scope)
                     values.append(reading_value(place.reading))
                     doubts.append(place.reading.standard_uncertainty)

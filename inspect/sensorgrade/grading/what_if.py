@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from sensorgrade.defects.defect import DefectCount
 from sensorgrade.grading.conformity import guard_factor
-from sensorgrade.grading.held import DeviceReadings, Held, held, known
+from sensorgrade.grading.held import DeviceReadings, Held, held
 from sensorgrade.grading.rule import count_outcome
 from sensorgrade.grading.selection import reading_value
 from sensorgrade.recipe.model import Grade, Limit, Recipe
@@ -53,9 +53,8 @@ def tightest(devices: Sequence[DeviceReadings], *, level: Grade, recipe: Recipe)
     """
     bounds = np.empty((len(devices), len(level.limits)))
     for row, device in enumerate(devices):
-        of_device = known(device.measurements, device.counts, device.findings)
         for column, limit in enumerate(level.limits):
-            places = held(limit, of_device, recipe=recipe)
+            places = held(limit, device.known, recipe=recipe)
             worst = [_bound(place, limit, recipe) for place in places]
             bounds[row, column] = max(worst) if limit.relation == "<=" else min(worst)
     return Tightest(tuple(device.serial for device in devices), level.limits, bounds)

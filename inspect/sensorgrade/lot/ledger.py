@@ -3,7 +3,6 @@
 One process writes it, the one that was started by the user; any number may read meanwhile.
 """
 
-import gc
 import json
 import os
 import socket
@@ -18,6 +17,7 @@ from types import TracebackType
 from typing import Any, Literal, Self
 
 from sensorgrade import __version__
+from sensorgrade.lot.collector import collector_rests
 from sensorgrade.lot.database import open_for_reading, open_for_writing
 from sensorgrade.lot.failure import Failure
 from sensorgrade.lot.fingerprint import Fingerprint
@@ -246,10 +246,13 @@ class Ledger:
         """Note a device's new file times, after its contents were found unchanged."""
         self._connection.execute("UPDATE devices SET state = ? WHERE folder = ?", (state, folder))
 
-    def results(self) -> list[DeviceResult]:
-        """Every inspected device in order of serial, as it was recorded."""
+    def results(self, *, with_inputs: bool = True) -> list[DeviceResult]:
+        """Every inspected device in order of serial, as it was recorded.
+
+        Without its inputs a result takes half the memory.
+        """
         with _snapshot(self._connection):
-            return select_results(self._connection)
+            return select_results(self._connection, with_inputs=with_inputs)
 
     def failures(self) -> list[Failure]:
         """Every device that could not be inspected, in order of serial."""
@@ -286,19 +289,13 @@ class Ledger:
 
 @contextmanager
 def _snapshot(connection: sqlite3.Connection) -> Iterator[None]:
-    """A read transaction: several SELECTs see one state of the ledger, whoever writes meanwhile.
-
-    The garbage collector rests: it would walk a million new rows again and again for nothing.
-    """
-    collecting = gc.isenabled()
-    gc.disable()
-    connection.execute("BEGIN")
-    try:
-        yield
-    finally:
-        connection.execute("ROLLBACK")
-        if collecting:
-            gc.enable()
+    """A read transaction: several SELECTs see one state of the ledger, whoever writes meanwhile."""
+    with collector_rests():
+        connection.execute("BEGIN")
+        try:
+            yield
+        finally:
+            connection.execute("ROLLBACK")
 
 
 def write_ledger(folder: Path) -> Ledger:

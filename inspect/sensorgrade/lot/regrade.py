@@ -5,7 +5,7 @@ from pathlib import Path
 
 from sensorgrade.errors import RequestError
 from sensorgrade.grading.decision import Graded
-from sensorgrade.grading.grade import grade
+from sensorgrade.grading.grade import grade_known
 from sensorgrade.grading.held import DeviceReadings
 from sensorgrade.grading.lot_statistics import (
     GradeYield,
@@ -24,8 +24,9 @@ from sensorgrade.grading.what_if import (
     costs,
     tightest,
 )
+from sensorgrade.lot.collector import collector_rests
 from sensorgrade.lot.recounting import moved_thresholds, with_counts_at
-from sensorgrade.lot.stored import StoredLot, stored_lot
+from sensorgrade.lot.stored import StoredLot, last_recipe, stored_lot
 from sensorgrade.recipe.load import load_limits, parse_recipe
 from sensorgrade.recipe.model import Recipe
 from sensorgrade.recipe.vocabulary import Vocabulary
@@ -59,6 +60,7 @@ class Regraded:
         )
 
 
+@collector_rests()
 def regrade(folder: Path, *, limits: Path, vocabulary: Vocabulary) -> Regraded:
     """Grade the devices of a run's ledger against the limits in a file, no frame read.
 
@@ -78,8 +80,8 @@ def regrade(folder: Path, *, limits: Path, vocabulary: Vocabulary) -> Regraded:
     RequestError, RecipeError
         No ledger, an unreadable file, or mistakes in it, one line each.
     """
-    run = stored_lot(folder, names=())
-    inspected = parse_recipe(run.recipe_text, vocabulary, path=run.recipe)
+    path, text = last_recipe(folder)
+    inspected = parse_recipe(text, vocabulary, path=path)
     recipe = load_limits(limits, vocabulary, recipe=inspected)
     moved = moved_thresholds(inspected.stages, recipe.stages)
     names = {limit.name for level in recipe.grades for limit in level.limits}
@@ -90,14 +92,7 @@ def regrade(folder: Path, *, limits: Path, vocabulary: Vocabulary) -> Regraded:
     if moved:
         devices = with_counts_at(stored, recipe=recipe, moved=moved, names=names)
     graded = tuple(
-        grade(
-            device.measurements,
-            device.counts,
-            device.findings,
-            recipe=recipe,
-            explain_accepted=False,
-        )
-        for device in devices
+        grade_known(device.known, recipe=recipe, explain_accepted=False) for device in devices
     )
     serials = [device.serial for device in stored.devices]
     return Regraded(
@@ -125,6 +120,7 @@ class WhatIf:
     concessions: Concessions | None
 
 
+@collector_rests()
 def what_if(
     devices: tuple[DeviceReadings, ...], *, recipe: Recipe, grade_name: str, wanted: int | None
 ) -> WhatIf:

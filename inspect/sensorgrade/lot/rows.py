@@ -6,6 +6,7 @@ import sys
 from collections import defaultdict
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import fields
+from functools import cache
 from typing import Any, TypeVar
 
 from sensorgrade.defects.defect import DefectCount
@@ -88,15 +89,15 @@ def _limit_number(connection: sqlite3.Connection, limit: Limit) -> int:
     return int(row[0])
 
 
-def select_results(connection: sqlite3.Connection) -> list[DeviceResult]:
-    """Every inspected device in order of serial, as it was recorded."""
+def select_results(connection: sqlite3.Connection, *, with_inputs: bool) -> list[DeviceResult]:
+    """Every inspected device in order of serial, as it was recorded, but for inputs left out."""
     limits = {
         number: Limit(*values)
         for number, *values in connection.execute(
             f'SELECT "limit", {", ".join(LIMIT_COLUMNS)} FROM limits'
         )
     }
-    inputs = _by_device(connection, "inputs", InputFile)
+    inputs = _by_device(connection, "inputs", InputFile) if with_inputs else defaultdict(list)
     measurements = _by_device(
         connection,
         "measurements",
@@ -121,7 +122,7 @@ def select_results(connection: sqlite3.Connection) -> list[DeviceResult]:
         connection,
         "findings",
         lambda severity, where, seen, remedy, undecides: Finding(
-            severity, where, seen, remedy, tuple(json.loads(undecides))
+            severity, where, seen, remedy, decoded_names(undecides)
         ),
     )
     not_measured = _by_device(connection, "not_measured", lambda stage, lacked: (stage, lacked))
@@ -163,6 +164,12 @@ def select_results(connection: sqlite3.Connection) -> list[DeviceResult]:
             " WHERE outcome = 'inspected' ORDER BY serial"
         )
     ]
+
+
+@cache
+def decoded_names(text: str) -> tuple[str, ...]:
+    """The names in one cell; a lot has few sets of them."""
+    return tuple(json.loads(text))
 
 
 def select_failures(connection: sqlite3.Connection) -> list[Failure]:

@@ -1,6 +1,5 @@
 """What a run's ledger holds of every device, as grading wants it: no frame is touched."""
 
-import json
 import sqlite3
 from collections.abc import Iterable
 from dataclasses import dataclass
@@ -12,6 +11,7 @@ from sensorgrade.errors import RequestError
 from sensorgrade.grading.held import DeviceReadings
 from sensorgrade.lot.candidate_rows import select_candidates
 from sensorgrade.lot.database import open_for_reading
+from sensorgrade.lot.rows import decoded_names
 from sensorgrade.measurement import Finding, Measurement
 
 
@@ -19,8 +19,8 @@ from sensorgrade.measurement import Finding, Measurement
 class StoredLot:
     """The inspected devices in order of serial, with grade and decision as they were.
 
-    ``folders`` are the devices' own, where their files lie. ``recipe`` and ``recipe_text`` are
-    those of the last run; ``failed`` are the serials of devices that could not be inspected.
+    ``folders`` are the devices' own, where their files lie; ``failed`` are the serials of devices
+    that could not be inspected.
     ``candidates`` are the pixels kept for other thresholds, None where there are none.
     """
 
@@ -28,8 +28,6 @@ class StoredLot:
     folders: tuple[Path, ...]
     grades: tuple[str | None, ...]
     decisions: tuple[str, ...]
-    recipe: str
-    recipe_text: str
     failed: tuple[str, ...]
     candidates: tuple[Candidates | None, ...]
 
@@ -51,15 +49,10 @@ def stored_lot(
     Raises
     ------
     RequestError
-        There is no ledger, or it holds no run.
+        There is no ledger.
     """
     connection = open_for_reading(folder)
     try:
-        run = connection.execute(
-            "SELECT recipe, recipe_text FROM runs ORDER BY run DESC LIMIT 1"
-        ).fetchone()
-        if run is None:
-            raise RequestError(f"{folder}: the ledger holds no run yet; inspect devices first")
         rows = connection.execute(
             "SELECT device, serial, folder, grade, decision FROM devices"
             " WHERE outcome = 'inspected' ORDER BY serial, device"
@@ -86,11 +79,30 @@ def stored_lot(
         folders=tuple(folder / name for _, _, name, _, _ in rows),
         grades=tuple(grade for _, _, _, grade, _ in rows),
         decisions=tuple(decision for _, _, _, _, decision in rows),
-        recipe=run[0],
-        recipe_text=run[1],
         failed=tuple(serial for (serial,) in failed),
         candidates=tuple(candidates.get(device) for device, *_ in rows),
     )
+
+
+def last_recipe(folder: Path) -> tuple[str, str]:
+    """Path and text of the recipe of a ledger's last run.
+
+    Raises
+    ------
+    RequestError
+        There is no ledger, or it holds no run.
+    """
+    connection = open_for_reading(folder)
+    try:
+        run = connection.execute(
+            "SELECT recipe, recipe_text FROM runs ORDER BY run DESC LIMIT 1"
+        ).fetchone()
+    finally:
+        connection.close()
+    if run is None:
+        raise RequestError(f"{folder}: the ledger holds no run yet; inspect devices first")
+    path, text = run
+    return path, text
 
 
 def _measurements(
@@ -128,7 +140,7 @@ def _findings(connection: sqlite3.Connection) -> dict[int, list[Finding]]:
         'SELECT device, severity, "where", seen, remedy, undecides FROM findings'
         " WHERE undecides <> '[]' ORDER BY device, place"
     ):
-        names = tuple(json.loads(undecides))
+        names = decoded_names(undecides)
         found.setdefault(device, []).append(Finding(severity, where, seen, remedy, names))
     return found
 
