@@ -243,7 +243,7 @@ def device(
     asked = recipe(shape)
     measured = measurements(rng, noise=noise)
     inputs = tuple(
-        InputFile(f"{serial}/bias_{i:03}.fits", 2 * rng.integers(99), f"{i:064x}")
+        InputFile(f"{serial}/bias_{i:03}.fits", 2 * int(rng.integers(99)), f"{i:064x}")
         for i in range(48)
     )
     result = DeviceResult(

@@ -1,15 +1,24 @@
 """The pages in a real browser: they answer, say nothing on the console and ask for nothing."""
 
+import json
 from dataclasses import replace
 from pathlib import Path
 
 import pytest
 
 from report.sample import device, lot
+from sensorgrade.frames.inventory import find_devices
 from sensorgrade.grading.grade import grade
+from sensorgrade.inspection import inspect_device
 from sensorgrade.lot.failure import Failure
+from sensorgrade.lot.result_json import result_json
+from sensorgrade.recipe.library import find_recipe
+from sensorgrade.recipe.load import load_recipe
+from sensorgrade.report.device_data import VERDICTS
 from sensorgrade.report.device_page import device_page
 from sensorgrade.report.lot_page import lot_page
+from sensorgrade.simulate.demo import demo_lot, write_demo
+from sensorgrade.stages import vocabulary
 
 CHROMIUM = Path("/usr/bin/chromium")
 ARGUMENTS = (
@@ -126,10 +135,11 @@ def test_a_click_on_a_defect_shows_its_own_pixel_in_every_master(device_tab, sam
     assert found == pytest.approx(float(dark), rel=2e-3)
     # ... and the brightest spot in the middle of the picture is that pixel
     middle = device_tab.evaluate(
-        """() => { const c = document.querySelectorAll(".pane canvas")[1];
-        return ("""
+        """() => new Promise((done) => requestAnimationFrame(() => requestAnimationFrame(() => {
+        const c = document.querySelectorAll(".pane canvas")[1];
+        done(("""
         + PIXELS
-        + """)(c, c.width / 2 - 3, c.height / 2 - 3, 3, 3)[0]; }"""
+        + """)(c, c.width / 2 - 3, c.height / 2 - 3, 3, 3)[0]); })))"""
     )
     assert middle > 200
 
@@ -267,10 +277,63 @@ def test_text_stands_out_from_its_ground(opened, name, colours):
     assert faint == []
 
 
-def test_a_page_prints_to_a4_with_its_pictures_and_limits(device_tab, tmp_path):
-    device_tab.pdf(path=tmp_path / "device.pdf", format="A4", print_background=True)
-    pages = (tmp_path / "device.pdf").read_bytes().count(b"/Type /Page\n")
-    assert 4 <= pages <= 14
+PARTS = ("verdict", "pictures", "defects", "curves", "numbers", "audit", "origin")
+
+
+@pytest.fixture(scope="module")
+def inspected(tmp_path_factory):
+    """Folder of one device of the demo, inspected from its frames: every plot of a real page."""
+    folder = tmp_path_factory.mktemp("inspected")
+    write_demo(demo_lot()[2:3], folder / "frames", seed=0)
+    asked = load_recipe(find_recipe("demo"), vocabulary())
+    (found,) = find_devices([folder / "frames"], asked)
+    made = inspect_device(found, asked, threads=2)
+    parts = {"masters": made.masters, "defects": made.defects, "stages": made.stages}
+    (folder / "device.html").write_text(device_page(made.result, **parts, recipe=asked))
+    crowded = replace(
+        made.result,
+        findings=made.result.findings * 8,
+        graded=replace(made.result.graded, limits=made.result.graded.limits * 3),
+    )
+    (folder / "crowded.html").write_text(device_page(crowded, **parts, recipe=asked))
+    return folder
+
+
+@pytest.mark.parametrize("name", ["device.html", "crowded.html"])
+def test_a_device_page_prints_to_one_sheet_of_a4_for_each_part(browser, inspected, name, tmp_path):
+    page = browser.new_page()
+    page.goto((inspected / name).as_uri())
+    page.wait_for_selector("#viewer[data-ready]")
+    assert page.evaluate("[...document.querySelectorAll('main > section')].map(s => s.id)") == [
+        *PARTS
+    ]
+    page.pdf(path=tmp_path / "device.pdf", format="A4", print_background=True)
+    page.close()
+    sheets = (tmp_path / "device.pdf").read_bytes().count(b"/Type /Page\n")
+    assert sheets == len(PARTS)
+
+
+@pytest.mark.parametrize("name", ["device.html", "lot.html"])
+@pytest.mark.parametrize("width", [WIDTHS[0], WIDTHS[-1]])
+def test_axe_core_finds_nothing_serious(opened, name, width):
+    """The rules of axe-core (Deque Systems, MPL-2.0), those for WCAG 2.1 AA among them."""
+    axe = pytest.importorskip("axe_playwright_python.sync_playwright")
+    ready = "#viewer[data-ready]" if name == "device.html" else "#mover[data-ready]"
+    tab = opened(name, width=width, ready=ready)
+    found = axe.Axe().run(tab).response
+    assert len(found["passes"]) > 20
+    assert [
+        (one["id"], one["impact"], [node["target"] for node in one["nodes"]][:5])
+        for one in found["violations"]
+        if one["impact"] in ("serious", "critical")
+    ] == []
+
+
+def test_the_grade_shown_is_that_of_the_result(device_tab, sample):
+    stored = json.loads(result_json(sample.result))["grade"]
+    assert device_tab.locator("#grade").inner_text() == (stored["grade"] or "no grade met")
+    assert device_tab.locator("#decision").inner_text() == VERDICTS[stored["decision"]]
+    assert device_tab.locator("#reason").inner_text() == stored["reasons"][0]
 
 
 def test_every_picture_has_words(device_tab):

@@ -19,7 +19,8 @@ from sensorgrade.options import quantity
 
 ALIKE = 2.0  # K, stacks whose temperatures differ by less are joined
 SAMPLES = 1 << 18  # pixels whose order statistics are taken
-BINS = 200
+BULK_BINS = 100  # of the histogram; its tail has as many
+BULK_REACH = 7.0  # standard deviations to each side
 UNLIKELY = 0.01
 
 QUANTITIES = (
@@ -88,7 +89,8 @@ class RegionDarkCurrent:
     """Dark current of one region.
 
     ``groups`` by temperature, ``stated`` the index of the one that measurements speak of.
-    ``edges`` (B + 1,) [electron/s] and ``counts`` (B,) are the histogram over pixels.
+    ``edges`` (B + 1,) [electron/s] and ``counts`` (B,) are the histogram over pixels: BULK_BINS
+    of equal width over the bulk, then wider and wider ones up to the hottest pixel.
     """
 
     scope: str
@@ -349,11 +351,12 @@ def _over_pixels(
     current = (
         longest.mean[cut][::step, ::step].astype(np.float64) - base.mean[cut][::step, ::step]
     ).ravel() * (gain.value / time)
-    low, median, lower, high, upper, top = np.quantile(
-        current, [0.001, 0.5, 0.985, 0.99, 0.995, 0.999]
+    first, median, third, lower, high, upper = np.quantile(
+        current, [0.1587, 0.5, 0.8413, 0.985, 0.99, 0.995]
     )
     below, above = np.quantile(current, [0.49, 0.51])
-    counts, edges = np.histogram(current, bins=BINS, range=(float(low), float(top)))
+    edges = _edges(float(median), float(third - first) / 2, float(current.max()))
+    counts, _ = np.histogram(current, bins=edges)
     scatter, _ = offset_scatter(inputs, region)
     common = scatter * sqrt(1 / longest.frames + 1 / base.frames) * gain.value / time
     measurements = []
@@ -369,6 +372,17 @@ def _over_pixels(
             )
         )
     return edges, counts.astype(np.int64), tuple(measurements)
+
+
+def _edges(median: float, deviation: float, highest: float) -> NDArray[np.float64]:
+    """Edges of bins of equal width over the bulk, then wider and wider ones to the highest."""
+    deviation = deviation or abs(median) * 1e-3 or 1e-6
+    reach = BULK_REACH * deviation
+    bulk = np.linspace(median - reach, median + reach, BULK_BINS + 1)
+    beyond = highest - bulk[-1]
+    if beyond <= 0:
+        return bulk
+    return np.concatenate((bulk, bulk[-1] + np.geomspace(deviation / 2, beyond * 2, BULK_BINS)))
 
 
 STAGE = Stage("dark_current", DarkCurrentOptions, dark_current, QUANTITIES)

@@ -1,16 +1,20 @@
 """Plots of the stages that look at darks: dark current, its spread, its law, its uniformity."""
 
+from dataclasses import replace
+
 import numpy as np
 from numpy.typing import NDArray
+from scipy.stats import norm
 
-from sensorgrade.measure.dark_current import DarkCurrentResult, RegionDarkCurrent
+from sensorgrade.measure.dark_current import BULK_BINS, DarkCurrentResult, RegionDarkCurrent
 from sensorgrade.measure.dark_uniformity import DarkUniformityResult
 from sensorgrade.report.noise_plots import drawn_regions, listed
 from sensorgrade.report.plot import Axis, Plot, Series
 from sensorgrade.report.response_plots import profile_plots
 from sensorgrade.wording import doubt_text, number_text
 
-LEAST_SHOWN = 0.3  # pixels in a bin, below which the bulk's curve is not drawn
+LEAST_SHOWN = 0.3  # pixels, below which the bulk's curve is not drawn
+TAIL = 5.0  # standard deviations above the bulk where the tail begins
 
 
 def dark_current_plots(result: DarkCurrentResult) -> tuple[Plot, ...]:
@@ -53,62 +57,75 @@ def _rise(regions: list[tuple[int, RegionDarkCurrent]], more: str) -> Plot:
 
 
 def _spread(regions: list[tuple[int, RegionDarkCurrent]], more: str) -> tuple[Plot, ...]:
-    """Histogram over pixels with the normal curve of its bulk: what lies beyond is the tail."""
+    """The bulk of the pixels with its normal curve, and how many pixels lie above each current."""
     if not regions:
         return ()
-    series: list[Series] = []
+    near: list[Series] = []
+    far: list[Series] = []
     tails = []
     for colour, one in regions:
-        series.append(
-            Series(label=one.scope, x=one.edges, y=one.counts, draw="steps", colour=colour)
-        )
-        centre, curve, beyond = bulk(one.edges, one.counts)
-        series.append(
+        total = int(one.counts.sum())
+        median, deviation = bulk(one.edges, one.counts)
+        edges, counts = one.edges[: BULK_BINS + 1], one.counts[:BULK_BINS]
+        near.append(Series(label=one.scope, x=edges, y=counts, draw="steps", colour=colour))
+        expected = total * np.diff(norm.cdf(edges, median, deviation))
+        near.append(_dashes((edges[1:] + edges[:-1]) / 2, expected, colour))
+        above = total - np.cumsum(one.counts)
+        far.append(
             Series(
-                label="",
-                x=centre,
-                y=np.where(curve > LEAST_SHOWN, curve, np.nan),
-                draw="dashes",
+                label=one.scope,
+                x=one.edges[1:],
+                y=np.where(above > 0, above, np.nan),
+                draw="line",
                 colour=colour,
             )
         )
-        tails.append(f"{one.scope} {beyond} of {int(one.counts.sum())}")
+        far.append(_dashes(edges, total * norm.sf(edges, median, deviation), colour))
+        beyond = np.interp(median + TAIL * deviation, one.edges[1:], above)
+        tails.append(f"{one.scope} {beyond:.0f} of {total}")
+    found = f"Beyond {TAIL:g} of its standard deviations lie {listed(tails)}."
+    axis = Axis(label="dark current [electron/s]")
     return (
         Plot(
             key="dark-distribution",
-            title="Dark current over pixels",
-            caption="Histogram over pixels; the dashes are a normal curve through its bulk. The"
-            " pixels to the right of it are the warm and hot ones: beyond 5 of its standard"
-            f" deviations lie {listed(tails)}.{more}",
-            alt=f"Histogram of dark current. In the tail: {listed(tails)}.",
-            x=Axis(label="dark current [electron/s]"),
+            title="Dark current of most pixels",
+            caption="Histogram over pixels; the dashes are a normal curve through its bulk. Look"
+            " for a second hump (glow, two kinds of pixels) and for a shoulder at its right."
+            f"{more}",
+            alt="Histogram of dark current about its median, with a normal curve.",
+            x=axis,
             y=Axis(label="pixels", log=True),
-            series=tuple(series),
+            series=tuple(near),
+        ),
+        Plot(
+            key="dark-tail",
+            title="Warm and hot pixels",
+            caption="How many pixels lie above each dark current; the dashes are the bulk alone."
+            f" Look for a step (a population of its own) in the tail. {found}{more}",
+            alt=f"Number of pixels above each dark current. {found}",
+            x=replace(axis, log=True),
+            y=Axis(label="pixels above", log=True),
+            series=tuple(far),
         ),
     )
 
 
-def bulk(
-    edges: NDArray[np.float64], counts: NDArray[np.int64]
-) -> tuple[NDArray[np.float64], NDArray[np.float64], int]:
-    """Centres of the bins, a normal curve there by median and quartile width, pixels above 5 sd.
+def _dashes(x: NDArray[np.float64], y: NDArray[np.float64], colour: int) -> Series:
+    """The bulk's curve, where it is worth drawing."""
+    shown = np.where(y > LEAST_SHOWN, y, np.nan)
+    return Series(label="", x=x, y=shown, draw="dashes", colour=colour)
+
+
+def bulk(edges: NDArray[np.float64], counts: NDArray[np.int64]) -> tuple[float, float]:
+    """Median and standard deviation of a histogram's bulk, the latter from its quartile width.
 
     Within a bin pixels are taken to lie evenly.
     """
-    total = int(counts.sum())
-    below = np.concatenate(([0.0], np.cumsum(counts))) / total
+    below = np.concatenate(([0.0], np.cumsum(counts))) / counts.sum()
     # Where no pixel lies the distribution is flat; interpolation needs it to rise.
     rising = below + np.arange(below.size) * 1e-12
     lower, median, upper = np.interp((0.1587, 0.5, 0.8413), rising, edges)
-    deviation = max((upper - lower) / 2, float(np.diff(edges).min()) / 4)
-    centre = (edges[1:] + edges[:-1]) / 2
-    curve = (
-        total
-        * np.diff(edges)
-        / (deviation * np.sqrt(2 * np.pi))
-        * np.exp(-0.5 * ((centre - median) / deviation) ** 2)
-    )
-    return centre, curve, int(counts[centre > median + 5 * deviation].sum())
+    return float(median), max(float(upper - lower) / 2, float(np.diff(edges).min()) / 4)
 
 
 def _law(regions: list[tuple[int, RegionDarkCurrent]], more: str) -> tuple[Plot, ...]:

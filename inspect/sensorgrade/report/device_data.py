@@ -46,6 +46,11 @@ class CountRow:
     kind: str
     cells: tuple[tuple[str, str], ...]
 
+    @property
+    def some(self) -> bool:
+        """Whether any was found, or may be there."""
+        return any(found not in ("", "0") or expected for found, expected in self.cells)
+
 
 @dataclass(frozen=True, slots=True)
 class PictureFrame:
@@ -81,7 +86,8 @@ class DevicePage:
     no_picture: tuple[str, ...] = told("A sentence for each master that could not be made.")
     kinds: tuple[KindMark, ...] = told("The kinds of defect in the table, with their marks.")
     count_scopes: tuple[str, ...] = told("The parts of the device that defects are counted in.")
-    counts: tuple[CountRow, ...] = told("The counts of each kind, part by part.")
+    counts: tuple[CountRow, ...] = told("The counts of each kind there is, part by part.")
+    none_found: tuple[str, ...] = told("The kinds that were looked for and surely not found.")
     printed_defects: tuple[PrintedDefect, ...] = told("The first rows of the defect table.")
     defect_total: int = told("How many defects the device has.")
     defects_left_out: int = told("How many of them are in defects.ecsv only.")
@@ -125,6 +131,7 @@ def device_data(
     ]
     script = static_text("numbers.js", "pictures.js", "defects.js")
     graded = result.graded
+    counts = _counts(result.defects)
     provenance = result.provenance
     return DevicePage(
         style=static_text("page.css"),
@@ -144,7 +151,8 @@ def device_data(
         no_picture=_no_picture(masters),
         kinds=rows.kinds,
         count_scopes=tuple(dict.fromkeys(one.scope for one in result.defects)),
-        counts=_counts(result.defects),
+        counts=tuple(row for row in counts if row.some),
+        none_found=tuple(row.kind for row in counts if not row.some),
         printed_defects=rows.printed,
         defect_total=rows.total,
         defects_left_out=rows.total - len(rows.rows),

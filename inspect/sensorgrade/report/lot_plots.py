@@ -194,6 +194,8 @@ def _summary(values: NDArray[np.float64], quantity: LotQuantity) -> str:
     """Median and the middle two thirds, in words."""
     low, median, high = np.percentile(values, (15.87, 50, 84.13))
     unit = unit_text(quantity.unit)
+    if low == high:
+        return f"{number_text(float(median))} {unit}".rstrip() + " for most devices."
     text = f"Median {number_text(float(median))}, middle two thirds "
     text += f"{number_text(float(low))} to {number_text(float(high))} {unit}".rstrip()
     return text + "."

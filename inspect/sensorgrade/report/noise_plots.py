@@ -59,15 +59,14 @@ def photon_transfer_plots(result: PhotonTransferResult) -> tuple[Plot, ...]:
         )
         lower.append(_departure(region, used, colour))
     ranges = listed(
-        f"{region.scope}: {region.model} model from {number_text(region.lower)} to"
-        f" {number_text(region.upper)} DN, {region.levels} levels"
+        f"{region.scope}: {region.model}, {number_text(region.lower, 3)} to"
+        f" {number_text(region.upper, 3)} DN, {region.levels} levels"
         for _, region in regions
     )
     caption = (
-        f"The variance of pair differences against the mean signal, both logarithmic. The line is"
-        f" the model over the range fitted ({ranges}). Look for points that leave it early: the"
-        f" gain would then be wrong. Below, their distance in % of the variance; a bend there means"
-        f" that the model lacks a term.{more}"
+        "Variance of pair differences against the mean signal. The line is the model over the"
+        f" range fitted ({ranges}). Look for points that leave it early: the gain would then be"
+        f" wrong. Below, their distance from it; a bend means that the model lacks a term.{more}"
     )
     return (
         Plot(

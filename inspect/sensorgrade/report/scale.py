@@ -28,10 +28,37 @@ class Scale:
         return (values - self.low) / (self.high - self.low)
 
     def ticks(self, most: int) -> list[tuple[float, str]]:
-        """At most about ``most`` round values inside the range, each with its text."""
-        return _decades(self.low, self.high, most) if self.log else self._round_values(most)
+        """At most about ``most`` round values inside the range, each with its text.
 
-    def _round_values(self, most: int) -> list[tuple[float, str]]:
+        The texts are those of the values over the power of ten that `label` puts into the unit.
+        """
+        if self.log:
+            return _decades(self.low, self.high, most)
+        step, values, power = self._round_values(most)
+        places = max(0, -math.floor(math.log10(step) + 1e-9) + power)
+        return [
+            (
+                value,
+                "0"
+                if abs(value) < step / 2
+                else f"{value / 10.0**power:.{places}f}".replace("-", "−"),
+            )
+            for value in values
+        ]
+
+    def label(self, text: str, most: int) -> str:
+        """The axis label ``text``, its unit with the power of ten that the ticks leave out."""
+        power = 0 if self.log else self._round_values(most)[2]
+        if not power:
+            return text
+        head, bracket, unit = text.rpartition("[")
+        if not bracket:
+            head, unit = f"{text} ", "1]"
+        unit = "]" if unit == "1]" else f" {unit}"
+        return f"{head}[10{str(power).translate(SUPERSCRIPTS)}{unit}"
+
+    def _round_values(self, most: int) -> tuple[float, list[float], int]:
+        """Step, values and the power of ten, a multiple of 3, that their texts are taken over."""
         span = self.high - self.low
         step = 10.0 ** math.floor(math.log10(span / most))
         for factor in (1, 2, 5, 10):
@@ -42,18 +69,7 @@ class Scale:
         values = [index * step for index in range(first, last + 1)]
         largest = max((abs(value) for value in values), default=0.0)
         exponent = math.floor(math.log10(largest)) if largest else 0
-        shift = 3 * (exponent // 3) if exponent >= 6 or exponent < -3 else 0
-        places = max(0, -math.floor(math.log10(step) + 1e-9) + shift)
-        power = f"·10{str(shift).translate(SUPERSCRIPTS)}" if shift else ""
-        return [
-            (
-                value,
-                "0"
-                if abs(value) < step / 2
-                else f"{value / 10.0**shift:.{places}f}".replace("-", "−") + power,
-            )
-            for value in values
-        ]
+        return step, values, 3 * (exponent // 3) if exponent >= 5 or exponent < -3 else 0
 
 
 def _decades(low: float, high: float, most: int) -> list[tuple[float, str]]:

@@ -10,12 +10,15 @@ from sensorgrade.report.plot import Axis, Mark, Plot, Series
 from sensorgrade.report.scale import Scale, scale
 
 WIDTH = 440.0
-LEFT, RIGHT, TOP, BOTTOM = 62.0, 12.0, 10.0, 46.0
+LEFT, RIGHT, TOP, BOTTOM = 68.0, 12.0, 10.0, 46.0
 UPPER = 200.0  # height of the main panel
 LOWER = 70.0  # height of the second panel
 GAP = 16.0
 LEGEND_LINE = 17.0
+CHARACTER = 6.9  # mean width of one, to keep labels apart
+X_TICKS = 6  # at most about so many
 PALETTE = 6  # colours s0 … s5 of the style sheet
+MANY = 100  # points of a line, from which it is drawn finer
 MOST_POINTS = 1500  # a thinned cloud of points looks the same
 
 
@@ -63,41 +66,60 @@ def _panel(
         yield f'<path class="grid" d="M{LEFT:g} {y:.1f}H{right:g}"/>'
         yield f'<text class="tick" x="{LEFT - 6:g}" y="{y + 4:.1f}" text-anchor="end">{text}</text>'
     yield f'<path class="axis" d="M{LEFT:g} {top:g}V{top + height:g}H{right:g}"/>'
+    label = y_scale.label(axis.label, ticks)
     yield (
         f'<text class="label" transform="translate(13 {top + height / 2:.1f}) rotate(-90)"'
-        f' text-anchor="middle">{escape(axis.label)}</text>'
+        f' text-anchor="middle">{escape(label)}</text>'
     )
     for one in series:
         yield from _series(one, x_scale, y_scale, top, height)
-    for index, mark in enumerate(marks):
-        yield from _mark(mark, x_scale, y_scale, top, height, line=index % 3)
-
-
-def _mark(
-    mark: Mark, x_scale: Scale, y_scale: Scale, top: float, height: float, *, line: int
-) -> Iterator[str]:
-    """A mark; labels of uprights stand on three lines in turn, so that neighbours stay apart."""
-    width = WIDTH - LEFT - RIGHT
-    if mark.x is not None:
-        place = float(x_scale.place(np.array(mark.x)))
-        if 0 <= place <= 1:
-            x = LEFT + width * place
-            late = place > 0.6
-            y = top + 11 + 15 * line
-            yield f'<path class="mark" d="M{x:.1f} {top:g}V{top + height:g}"/>'
+    yield from _uprights([one for one in marks if one.x is not None], series, x_scale, y_scale, top)
+    for mark in marks:
+        level = float(y_scale.place(np.array(np.nan if mark.y is None else mark.y)))
+        if 0 <= level <= 1:
+            at = top + height * (1 - level)
+            yield f'<path class="mark" d="M{LEFT:g} {at:.1f}H{right:g}"/>'
             yield (
-                f'<text class="marked" x="{x + (-4 if late else 4):.1f}" y="{y:g}"'
-                f' text-anchor="{"end" if late else "start"}">{escape(mark.label)}</text>'
-            )
-    if mark.y is not None:
-        place = float(y_scale.place(np.array(mark.y)))
-        if 0 <= place <= 1:
-            y = top + height * (1 - place)
-            yield f'<path class="mark" d="M{LEFT:g} {y:.1f}H{WIDTH - RIGHT:g}"/>'
-            yield (
-                f'<text class="marked" x="{WIDTH - RIGHT - 3:g}" y="{y - 4:.1f}"'
+                f'<text class="marked" x="{right - 3:g}" y="{at - 4:.1f}"'
                 f' text-anchor="end">{escape(mark.label)}</text>'
             )
+
+
+def _uprights(
+    marks: list[Mark],
+    series: tuple[Series, ...],
+    x_scale: Scale,
+    y_scale: Scale,
+    top: float,
+) -> Iterator[str]:
+    """Marks at an x; labels stand on three lines in turn, at the end where fewer points are."""
+    labels: dict[float, list[str]] = {}
+    for mark in marks:
+        place = float(x_scale.place(np.array(mark.x)))
+        if 0 <= place <= 1:
+            labels.setdefault(round(LEFT + (WIDTH - LEFT - RIGHT) * place, 1), []).append(
+                mark.label
+            )
+    yield from (f'<path class="mark" d="M{x:g} {top:g}V{top + UPPER:g}"/>' for x in labels)
+    dots = [one for one in series if one.draw == "points"]
+    px, py = _pixels(
+        np.concatenate([np.empty(0), *(x_scale.place(np.asarray(one.x, float)) for one in dots)]),
+        np.concatenate([np.empty(0), *(y_scale.place(np.asarray(one.y, float)) for one in dots)]),
+        top,
+        UPPER,
+    )
+    for line, (x, names) in enumerate(labels.items()):
+        text = ", ".join(dict.fromkeys(names))
+        wide = CHARACTER * len(text)
+        late = x + wide > WIDTH - RIGHT
+        covered = (px > x - wide) & (px < x) if late else (px > x) & (px < x + wide)
+        above = np.count_nonzero(covered & (py < top + UPPER / 3))
+        below = np.count_nonzero(covered & (py > top + UPPER * 2 / 3))
+        y = top + 11 + 15 * (line % 3) if above <= below else top + UPPER - 8 - 15 * (line % 3)
+        yield (
+            f'<text class="marked" x="{x + (-4 if late else 4):.1f}" y="{y:g}"'
+            f' text-anchor="{"end" if late else "start"}">{escape(text)}</text>'
+        )
 
 
 def _series(
@@ -137,8 +159,8 @@ def _series(
         d = "".join(f"M{a:.1f} {b:.1f}{shape}" for a, b in zip(px[inside], py[inside], strict=True))
         yield f'<path class="points {colour}" d="{d}"/>'
         return
-    dashes = " dashes" if one.draw == "dashes" else ""
-    yield f'<path class="line {colour}{dashes}" d="{_polyline(px, py, inside)}"/>'
+    look = " dashes" if one.draw == "dashes" else " fine" if x.size > MANY else ""
+    yield f'<path class="line {colour}{look}" d="{_polyline(px, py, inside)}"/>'
 
 
 def _pixels(
@@ -174,13 +196,13 @@ POINTS_SMALL = "m-.9-.9h1.8v1.8h-1.8z"
 
 def _x_axis(axis: Axis, x_scale: Scale, base: float) -> Iterator[str]:
     width = WIDTH - LEFT - RIGHT
-    for value, text in x_scale.ticks(6):
+    for value, text in x_scale.ticks(X_TICKS):
         x = LEFT + width * float(x_scale.place(np.array(value)))
         yield f'<path class="axis" d="M{x:.1f} {base:g}v4"/>'
         yield f'<text class="tick" x="{x:.1f}" y="{base + 17:g}" text-anchor="middle">{text}</text>'
     yield (
         f'<text class="label" x="{LEFT + width / 2:g}" y="{base + 38:g}"'
-        f' text-anchor="middle">{escape(axis.label)}</text>'
+        f' text-anchor="middle">{escape(x_scale.label(axis.label, X_TICKS))}</text>'
     )
 
 
@@ -192,7 +214,7 @@ def _legend(plot: Plot) -> list[list[tuple[Series, float]]]:
     lines: list[list[tuple[Series, float]]] = [[]]
     x = LEFT
     for one in named:
-        width = 26 + 6.4 * len(one.label)
+        width = 26 + CHARACTER * len(one.label)
         if lines[-1] and x + width > WIDTH - RIGHT:
             lines.append([])
             x = LEFT

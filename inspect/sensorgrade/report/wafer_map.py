@@ -12,6 +12,7 @@ from sensorgrade.report.lot_rows import STATES
 
 STEP = 20.0  # drawing units from die to die
 SIZE = 18.0
+LARGEST = 1.6  # screen pixels that a drawing unit may take
 RIM = 24.0  # room for the numbers of rows and columns
 LARGE = 32  # dies across, above which a die has no room for its grade's number
 GRADES = 4  # shades of accepted dies
@@ -79,6 +80,7 @@ def _head(wafer: str, text: str, rows: tuple[int, int], columns: tuple[int, int]
     ]
     return (
         f'<svg class="wafer-map" viewBox="0 0 {wide:g} {high:g}" role="group"'
+        f' style="max-width:{LARGEST * wide:g}px"'
         f' aria-label="{escape(f"Wafer {wafer}: {text}. Each die is a link to its page.")}">'
         + "".join(labels)
     )
