@@ -65,7 +65,9 @@ def test_plan_says_what_is_enough_and_what_to_take(lot):
     assert "read noise at most 5 electron" in found.output
     assert ": enough" in found.output
     assert found.exit_code == 0
-    few = ran(plan.command, "--recipe", lot / "recipe.yaml", "--exposure", 10, "--bias", 2)
+    few = ran(
+        plan.command, "--recipe", lot / "recipe.yaml", "--exposure", 10, "--expect", "pixels=1e6"
+    )
     assert "take dark exposure 10 -> 20" in few.output
     assert few.exit_code == 1
 

@@ -26,7 +26,8 @@ CANDIDATE = np.dtype(
 )
 # What was looked for in one part and region: the ``threshold`` chosen where the recipe states none,
 # a usual pixel's standard uncertainty ``typical``, and ``reach``: every pixel that stands apart
-# significantly and lies beyond that value is among the candidates.
+# significantly and lies beyond that value is among the candidates. ``scale`` is the relative
+# standard uncertainty that all values of the region share: that of its conversion gain.
 REACH = np.dtype(
     [
         ("part", "u1"),
@@ -34,6 +35,7 @@ REACH = np.dtype(
         ("threshold", "<f8"),
         ("typical", "<f8"),
         ("reach", "<f8"),
+        ("scale", "<f8"),
     ]
 )
 # Defects of other kinds, whose thresholds cannot move: they share in ranking and in clusters.

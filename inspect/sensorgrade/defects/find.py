@@ -233,43 +233,45 @@ def _counts(
 ) -> list[DefectCount]:
     """Counts for the device, each output and each zone.
 
-    The expected number is the sum of the candidates' probabilities; candidates below one half are
-    in it although they are not in the table. Its variance is the sum of p (1 - p).
+    ``points`` are those in no line and no cluster; candidates below one half are among them
+    although they are not in the table. The expected number is the sum of the probabilities. Its
+    variance is the sum of p (1 - p), and for each output the square of what a standard uncertainty
+    of its gain, which moves all its pixels together, changes in that sum.
     """
-    doubtful = points[points["probability"] < CERTAIN]
+    large = table[~np.isin(table["kind"], RANK)]
+    names_of = [output.name for output in geometry.outputs]
+    output = _outputs(geometry, points["row"], points["column"])
     parts: list[tuple[str, NDArray[np.bool_], NDArray[np.bool_]]] = [
-        ("device", np.ones(len(table), np.bool_), np.ones(len(doubtful), np.bool_))
+        ("device", np.ones(len(large), np.bool_), np.ones(len(points), np.bool_))
     ]
-    if len(geometry.outputs) > 1:
-        of_doubtful = _outputs(geometry, doubtful["row"], doubtful["column"])
-        parts += [
-            (f"output {one.name}", table["output"] == one.name, of_doubtful == one.name)
-            for one in geometry.outputs
-        ]
+    if len(names_of) > 1:
+        parts += [(f"output {one}", large["output"] == one, output == one) for one in names_of]
     parts += [
         (
             f"zone {name}",
-            in_zone(zone, table["row"], table["column"], geometry.shape),
-            in_zone(zone, doubtful["row"], doubtful["column"], geometry.shape),
+            in_zone(zone, large["row"], large["column"], geometry.shape),
+            in_zone(zone, points["row"], points["column"], geometry.shape),
         )
         for name, zone in zones.items()
     ]
     counts = []
     for count in names:
-        counted = np.isin(table["kind"], count.kinds)
-        maybe = np.isin(doubtful["kind"], count.kinds)
-        for scope, here, maybe_here in parts:
-            mine = table[counted & here]
+        of_large = np.isin(large["kind"], count.kinds)
+        of_points = np.isin(points["kind"], count.kinds)
+        for scope, large_here, here in parts:
+            mine = large[of_large & large_here]
             _, first = np.unique(_place(mine), return_index=True)
-            sure = mine["probability"][first]
-            chance = np.concatenate([sure, doubtful["probability"][maybe & maybe_here]])
+            single = points[of_points & here]
+            chance = np.concatenate([mine["probability"][first], single["probability"]])
+            together = [single["shared"][output[of_points & here] == one].sum() for one in names_of]
+            variance = (chance * (1 - chance)).sum() + np.square(together).sum()
             counts.append(
                 DefectCount(
                     kind=count.name,
                     scope=scope,
-                    found=len(sure),
+                    found=len(first) + int(np.sum(single["probability"] >= CERTAIN)),
                     expected=float(chance.sum()),
-                    standard_uncertainty=float(np.sqrt((chance * (1 - chance)).sum())),
+                    standard_uncertainty=float(np.sqrt(variance)),
                 )
             )
     return counts

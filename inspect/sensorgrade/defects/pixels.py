@@ -23,6 +23,7 @@ from sensorgrade.frames.geometry import Region
 from sensorgrade.kernels.excess_scatter import excess_scatter
 from sensorgrade.masters.reduced import StackImage
 from sensorgrade.measure.stage import Inputs
+from sensorgrade.measurement import Measurement
 
 CHANCE = 1e-8  # of a quiet pixel being called noisy
 LEAST_FRAMES = 5  # to tell a noisy pixel by its scatter
@@ -100,7 +101,7 @@ STAGE = DefectStage("pixels", PixelOptions, pixels, COUNTS)
 class Sought:
     """Pixels of one part and region that stand apart: arrays (K,), as in `CANDIDATE`.
 
-    ``automatic``, ``typical`` and ``reach`` are as in `REACH`.
+    ``automatic``, ``typical``, ``reach`` and ``scale`` are as in `REACH`.
     """
 
     part: int
@@ -111,6 +112,7 @@ class Sought:
     automatic: float
     typical: float
     reach: float
+    scale: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -118,15 +120,15 @@ class Kept:
     """What is kept of a `Sought`: a CANDIDATE array and a REACH row."""
 
     pixels: NDArray[np.void]
-    reach: tuple[int, int, float, float, float]
+    reach: tuple[int, int, float, float, float, float]
 
 
 def _dark(inputs: Inputs, options: PixelOptions, region: Region) -> list[Sought]:
     master = inputs.masters.dark
     if master is None or not master.stack.exposure:
         raise NotMeasured("needs a master dark: bias frames, and dark frames with an exposure time")
-    gain = inputs.measured("conversion_gain", region.scope).value
-    factor = gain / master.stack.exposure  # electron/s for a DN
+    gain = inputs.measured("conversion_gain", region.scope)
+    factor = gain.value / master.stack.exposure  # electron/s for a DN
     level = background(master.values, region)
     automatic = 10 * max(float(np.median(level.middle)) * factor, 0.0)
     image = _stack_image(inputs, master.stack)
@@ -161,6 +163,7 @@ def _dark(inputs: Inputs, options: PixelOptions, region: Region) -> list[Sought]
             automatic,
             typical,
             reach,
+            _relative(gain),
         )
     ]
 
@@ -204,6 +207,7 @@ def _response(inputs: Inputs, options: PixelOptions, region: Region) -> list[Sou
                 0.0,
                 typical,
                 100.0 + sign * reach,
+                0.0,
             )
         )
     return found
@@ -213,13 +217,13 @@ def _offset(inputs: Inputs, options: PixelOptions, region: Region) -> list[Sough
     image = inputs.reduced.bias
     if image is None or image.frames < 2:
         raise NotMeasured("needs two bias frames or more")
-    gain = inputs.measured("conversion_gain", region.scope).value
+    gain = inputs.measured("conversion_gain", region.scope)
     level = background(image.mean, region)
-    noise = float(np.sqrt(inputs.reduced.noise[region.scope].read) * gain)
+    noise = float(np.sqrt(inputs.reduced.noise[region.scope].read) * gain.value)
     typical = noise / float(np.sqrt(image.frames))
 
     def past(reach: float) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
-        by = np.float32(reach / gain)
+        by = np.float32(reach / gain.value)
         return level.middle - by, level.middle + by
 
     threshold = nearest_threshold(OFFSET, options, 10 * noise)
@@ -231,8 +235,8 @@ def _offset(inputs: Inputs, options: PixelOptions, region: Region) -> list[Sough
         needed=threshold - NEAR * typical,
         least=options.significance * typical,
     )
-    value = (image.mean[rows, columns] - level.at(rows, columns, level.middle)) * gain
-    error = _errors(inputs, image, region, rows, columns) * gain
+    value = (image.mean[rows, columns] - level.at(rows, columns, level.middle)) * gain.value
+    error = _errors(inputs, image, region, rows, columns) * gain.value
     return [
         Sought(
             OFFSET,
@@ -243,6 +247,7 @@ def _offset(inputs: Inputs, options: PixelOptions, region: Region) -> list[Sough
             10 * noise,
             typical,
             reach,
+            _relative(gain),
         )
     ]
 
@@ -275,14 +280,20 @@ def _points(sought: Sought, options: PixelOptions) -> list[NDArray[np.void]]:
     value, error = sought.value.astype(np.float64), sought.error.astype(np.float64)
     found = []
     for one in judged(
-        sought.part, value, error, options, automatic=sought.automatic, typical=sought.typical
+        sought.part,
+        value,
+        error,
+        options,
+        automatic=sought.automatic,
+        typical=sought.typical,
+        scale=sought.scale,
     ):
         points = np.zeros(len(one.places), POINT)
         points["kind"], points["unit"] = one.kind, UNITS[sought.part]
         points["row"], points["column"] = sought.rows[one.places], sought.columns[one.places]
         points["value"], points["uncertainty"] = value[one.places], error[one.places]
         points["significance"] = significance(sought.part, value, error)[one.places]
-        points["probability"] = one.probability
+        points["probability"], points["shared"] = one.probability, one.shared
         found.append(points)
     return found
 
@@ -301,7 +312,13 @@ def _kept(sought: Sought, region: int, options: PixelOptions) -> Kept:
     pixels["part"], pixels["region"] = sought.part, region
     pixels["row"], pixels["column"] = sought.rows[chosen], sought.columns[chosen]
     pixels["value"], pixels["uncertainty"] = sought.value[chosen], sought.error[chosen]
-    return Kept(pixels, (sought.part, region, sought.automatic, sought.typical, reach))
+    return Kept(
+        pixels, (sought.part, region, sought.automatic, sought.typical, reach, sought.scale)
+    )
+
+
+def _relative(gain: Measurement) -> float:
+    return gain.standard_uncertainty / gain.value
 
 
 def _noise(inputs: Inputs, options: PixelOptions, region: Region) -> NDArray[np.void]:

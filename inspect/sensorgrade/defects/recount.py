@@ -58,6 +58,7 @@ class Entries:
     column: Integers
     significance: Floats
     probability: Floats
+    shared: Floats
 
     def __getitem__(self, chosen: Integers | NDArray[np.bool_]) -> "Entries":
         return Entries(
@@ -67,6 +68,7 @@ class Entries:
             self.column[chosen],
             self.significance[chosen],
             self.probability[chosen],
+            self.shared[chosen],
         )
 
 
@@ -120,10 +122,11 @@ def _group(
 def _judged(group: list[Candidates], layout: Layout, options: PixelOptions) -> Entries:
     """Every pixel with the kinds it may be, and the settled ones."""
     automatic = np.full((len(group), len(PARTS), len(layout.regions)), np.nan)
-    typical = np.full_like(automatic, np.nan)
+    typical, scale = np.full_like(automatic, np.nan), np.zeros_like(automatic)
     reaches = np.concatenate([one.reaches for one in group])
     at = _devices([one.reaches for one in group]), reaches["part"], reaches["region"]
     automatic[at], typical[at] = reaches["threshold"], reaches["typical"]
+    scale[at] = reaches["scale"]
     pixels = np.concatenate([one.pixels for one in group])
     device = _devices([one.pixels for one in group])
     parts = []
@@ -135,7 +138,13 @@ def _judged(group: list[Candidates], layout: Layout, options: PixelOptions) -> E
         place = of_device, part, chosen["region"]
         apart = significance(part, value, error)
         kinds = judged(
-            part, value, error, options, automatic=automatic[place], typical=typical[place]
+            part,
+            value,
+            error,
+            options,
+            automatic=automatic[place],
+            typical=typical[place],
+            scale=scale[place],
         )
         parts += [
             Entries(
@@ -145,6 +154,7 @@ def _judged(group: list[Candidates], layout: Layout, options: PixelOptions) -> E
                 chosen["column"][one.places].astype(np.int64),
                 apart[one.places],
                 one.probability,
+                one.shared,
             )
             for one in kinds
         ]
@@ -157,6 +167,7 @@ def _judged(group: list[Candidates], layout: Layout, options: PixelOptions) -> E
             settled["column"].astype(np.int64),
             settled["significance"],
             settled["probability"],
+            np.zeros(len(settled)),
         )
     )
     return _joined(parts)
@@ -182,7 +193,9 @@ def _clustered(entries: Entries, layout: Layout, options: ClusterOptions) -> lis
         else np.empty(0, np.float64)
     )
     kind = np.full(len(first), CLUSTER)
-    clusters = Entries(worst.device, kind, worst.row, worst.column, worst.significance, least)
+    clusters = Entries(
+        worst.device, kind, worst.row, worst.column, worst.significance, least, np.zeros(len(first))
+    )
     return [entries[alone], clusters]
 
 
@@ -196,8 +209,9 @@ def _counts(
     """Counts for each device, its outputs and zones."""
     scopes: list[tuple[str, NDArray[np.bool_] | None]] = [("device", None)]
     rows, columns = entries.row.astype(np.int32), entries.column.astype(np.int32)
-    if len(layout.outputs) > 1:
-        output = outputs_at(layout, rows, columns)
+    output = outputs_at(layout, rows, columns)
+    number_of = len(layout.outputs)
+    if number_of > 1:
         scopes += [
             (f"output {name}", output == place) for place, (name, _) in enumerate(layout.outputs)
         ]
@@ -215,6 +229,9 @@ def _counts(
             number = np.bincount(device[sure[here]], minlength=devices).tolist()
             expected = np.bincount(device, entries.probability[here], devices).tolist()
             variance = np.bincount(device, doubt[here], devices)
+            place = device * number_of + output[here]
+            together = np.bincount(place, entries.shared[here], devices * number_of)
+            variance += np.square(together.reshape(devices, number_of)).sum(axis=1)
             for of_device, *count in zip(
                 found, number, expected, np.sqrt(variance).tolist(), strict=True
             ):
@@ -276,7 +293,7 @@ def _joined(parts: list[Entries]) -> Entries:
     return Entries(
         *(
             np.concatenate([getattr(one, name) for one in parts])
-            for name in ("device", "kind", "row", "column", "significance", "probability")
+            for name in ("device", "kind", "row", "column", "significance", "probability", "shared")
         )
     )
 

@@ -11,7 +11,9 @@ from sensorgrade.defects.candidates import CANDIDATE, REACH
 from sensorgrade.measure.stage import Inputs
 
 # A pixel that may be past a threshold. ``value`` is its departure in ``unit``, ``significance``
-# that over its uncertainty, ``probability`` the chance that the true value is past the threshold.
+# that over its uncertainty, ``probability`` the chance that the true value is past the threshold,
+# ``shared`` how much that changes with one standard uncertainty of what all pixels of an output
+# share.
 POINT = np.dtype(
     [
         ("kind", "U24"),
@@ -22,6 +24,7 @@ POINT = np.dtype(
         ("unit", "U24"),
         ("significance", "f8"),
         ("probability", "f8"),
+        ("shared", "f8"),
     ]
 )
 

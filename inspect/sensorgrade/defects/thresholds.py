@@ -12,6 +12,7 @@ from sensorgrade.options import number, quantity
 Floats = NDArray[np.float64]
 
 NEAR = 4.0  # typical uncertainties short of a threshold within which a pixel may be past it
+SQRT_2_PI = float(np.sqrt(2 * np.pi))
 LEAST_CHANCE = 1e-3  # of being past the threshold, below which a pixel adds nothing to a count
 
 
@@ -67,11 +68,16 @@ MOVABLE = {
 
 @dataclass(frozen=True, slots=True)
 class Judged:
-    """Pixels that may be of ``kind``: their ``places`` in the arrays given, and probabilities."""
+    """Pixels that may be of ``kind``: their ``places`` in the arrays given, and probabilities.
+
+    ``shared`` is how much a probability changes with one standard uncertainty of what all values
+    of the region share.
+    """
 
     kind: str
     places: NDArray[np.int64]
     probability: Floats
+    shared: Floats
 
 
 def nearest_threshold(part: int, options: PixelOptions, automatic: float) -> float:
@@ -100,6 +106,7 @@ def judged(
     *,
     automatic: Floats | float,
     typical: Floats | float,
+    scale: Floats | float,
 ) -> list[Judged]:
     """The kinds that pixels of one part may be.
 
@@ -113,10 +120,11 @@ def judged(
         Place in `PARTS`.
     value, error : ndarray of shape (K,)
         Values in the part's unit with standard uncertainties.
-    automatic, typical : ndarray of shape (K,) or float
+    automatic, typical, scale : ndarray of shape (K,) or float
         As in REACH, for each pixel.
     """
     every = np.ones(len(value), np.bool_)
+    apart = significance(part, value, error) >= options.significance
     match PARTS[part]:
         case "dark":
             hot = automatic if options.hot is None else options.hot
@@ -133,11 +141,13 @@ def judged(
         case _:
             limit = automatic if options.offset is None else options.offset
             asked = [("offset", every, np.abs(value) - limit)]
-    apart = significance(part, value, error) >= options.significance
     found = []
     for kind, where, past in asked:
         places = np.flatnonzero(apart & where & (past >= -NEAR * np.asarray(typical)))
-        chance = ndtr(past[places] / error[places])
+        apart_by = past[places] / error[places]
+        chance = ndtr(apart_by)
         likely = chance >= LEAST_CHANCE
-        found.append(Judged(kind, places[likely], chance[likely]))
+        density = np.exp(-(apart_by**2) / 2) / (SQRT_2_PI * error[places])
+        shared = density * np.abs(value[places]) * np.broadcast_to(scale, value.shape)[places]
+        found.append(Judged(kind, places[likely], chance[likely], shared[likely]))
     return found

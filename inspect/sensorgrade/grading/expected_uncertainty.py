@@ -163,14 +163,16 @@ def hot_pixels_uncertainty(device: ExpectedDevice, taken: FrameSet, *, expected:
 
     A pixel's dark current has u = sqrt(r² (1/B + 1/L) + T t / L) / t. Pixels near the threshold
     have density expected / hot_scale; with chances p = Phi(z), the sum of p (1 - p) over them is
-    that density times u / sqrt(pi).
+    that density times u / sqrt(pi). The gain moves them all together, by T u(g) / g.
     """
     if taken.darks == 0 or taken.bias == 0 or taken.dark_exposure <= 0.0:
         return inf
     time = taken.dark_exposure
     read = device.read_noise**2 * (1.0 / taken.bias + 1.0 / taken.darks)
     doubt = sqrt(read + device.hot_threshold * time / taken.darks) / time
-    return sqrt(expected / device.hot_scale * doubt / sqrt(pi))
+    density = expected / device.hot_scale
+    gain = conversion_gain_uncertainty(device, taken) / device.conversion_gain
+    return hypot(sqrt(density * doubt / sqrt(pi)), density * device.hot_threshold * gain)
 
 
 # The value of a limit that the device is expected to lie near takes the place of the device's own.
