@@ -150,8 +150,12 @@ def inspect_and_write(
     into: Path,
     threads: int,
     stage: Callable[[str], None],
+    figures: bool = False,
 ) -> DeviceResult:
-    """Inspect one device and write all its files into the folder ``into``."""
+    """Inspect one device and write all its files into the folder ``into``.
+
+    With ``figures`` the page's figures are also written as files, into ``into / "figures"``.
+    """
     made = inspect_device(device, recipe, threads=threads, stage=stage)
     stage("files")
     serial = made.result.serial
@@ -179,6 +183,11 @@ def inspect_and_write(
         if isinstance(pumped, PocketPumpingResult):
             write_trap_table(into / "traps.ecsv", pumped.traps)
         write_whole(into / "device.html", page())
+        if figures:
+            # matplotlib takes a second to import, and no other file needs it
+            from sensorgrade.report.figure_files import write_figures
+
+            write_figures(into / "figures", masters=made.masters, stages=made.stages, serial=serial)
         for one in written:
             one.result()
     write_whole(into / "result.json", result_json(made.result))
@@ -192,17 +201,21 @@ def inspect_lot(
     ledger: Ledger,
     options: LotOptions,
     report: Report = lambda progress: None,
+    figures: bool = False,
 ) -> LotOutcome:
-    """Inspect devices into the ledger's folder, then write the lot's page and table."""
+    """Inspect devices into the ledger's folder, then write the lot's page and table.
+
+    With ``figures`` the figures of the devices' pages are also written as files.
+    """
     outcome = run_lot(
         devices,
-        partial(inspect_and_write, recipe=recipe),
+        partial(inspect_and_write, recipe=recipe, figures=figures),
         ledger=ledger,
         recipe=recipe,
         options=options,
         report=report,
     )
-    results, failures = ledger.results(with_inputs=False), ledger.failures()
+    results, failures = ledger.results(in_short=True), ledger.failures()
     with collector_rests():
         table = lot_csv(lot_columns(results, failures))
         page = lot_page(results, failures=failures, recipe=recipe, name=ledger.folder.name)

@@ -28,14 +28,14 @@ from sensorgrade.report.lot_page import lot_page
 from sensorgrade.stages import vocabulary
 recipe = load_recipe(find_recipe("demo"), vocabulary())
 with read_ledger(Path(sys.argv[1])) as ledger:
-    results, failures = ledger.results(with_inputs=False), ledger.failures()
+    results, failures = ledger.results(in_short=True), ledger.failures()
 page = lot_page(results, failures=failures, recipe=recipe, name="year")
 Path(sys.argv[1], "lot.html").write_text(page)
 """
 
 
-def measured(program: str, *arguments: object) -> tuple[float, float]:
-    """Seconds and peak memory [MiB] of a Python program of its own, output thrown away."""
+def measured(program: str, *arguments: object) -> tuple[float, float, float]:
+    """Seconds, of them of processor, and peak memory [MiB] of a Python program of its own."""
     start = time.perf_counter()
     process = subprocess.Popen(
         [sys.executable, "-c", program, *map(str, arguments)],
@@ -45,7 +45,8 @@ def measured(program: str, *arguments: object) -> tuple[float, float]:
     _, status, usage = os.wait4(process.pid, 0)
     if os.waitstatus_to_exitcode(status) not in (0, 1):
         raise RuntimeError(f"{arguments} failed")
-    return time.perf_counter() - start, usage.ru_maxrss / 1024
+    seconds = time.perf_counter() - start
+    return seconds, usage.ru_utime + usage.ru_stime, usage.ru_maxrss / 1024
 
 
 def filled(folder: Path, inspected: Path, devices: int) -> float:
@@ -126,11 +127,11 @@ def section(devices: int) -> list[str]:
         f" a device, the lot page {page / devices / 1000:.2f} kB; recording one takes"
         f" {1000 * record:.1f} ms.",
         "",
-        "| figure | seconds | peak memory [MiB] | wanted, at most |",
-        "|---|---|---|---|",
+        "| figure | seconds | of them processor | peak memory [MiB] | wanted, at most |",
+        "|---|---|---|---|---|",
         *(
-            f"| {label} | {seconds:.2f} | {peak:.0f} | {wanted} |"
-            for label, wanted, (seconds, peak) in rows
+            f"| {label} | {seconds:.2f} | {busy:.2f} | {peak:.0f} | {wanted} |"
+            for label, wanted, (seconds, busy, peak) in rows
         ),
         "",
     ]

@@ -61,7 +61,7 @@ def command(
         if csv_file or ecsv_file or parquet_file:
             from sensorgrade.lot.lot_table import write_tables
 
-            results, failures = ledger.results(with_inputs=False), ledger.failures()
+            results, failures = ledger.results(in_short=True), ledger.failures()
             write_tables(results, failures, csv=csv_file, ecsv=ecsv_file, parquet=parquet_file)
     places = None
     if wafers or reticle:

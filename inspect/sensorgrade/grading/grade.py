@@ -21,7 +21,7 @@ def grade(
     findings: Sequence[Finding],
     *,
     recipe: Recipe,
-    explain_accepted: bool = True,
+    with_accepted: bool = True,
 ) -> Graded:
     """The best grade all of whose limits are met, every limit's outcome, and the reasons.
 
@@ -36,9 +36,9 @@ def grade(
         All that the stages and the audit said of the device.
     recipe : Recipe
         Its grades, best first, its decision rule, outputs and temperature tolerance.
-    explain_accepted : bool
-        Whether limits that are met get their sentence too; writing them is half of the work, which
-        counts when a whole lot is graded again and only what is missed is told.
+    with_accepted : bool
+        Whether limits that are met stand in the result too; working out their probability and
+        sentence is most of the work, which counts when a whole lot is graded again.
 
     Returns
     -------
@@ -49,11 +49,11 @@ def grade(
         more of the lower grades first, then the farthest past the limit in proportion to it.
     """
     return grade_known(
-        known(measurements, counts, findings), recipe=recipe, explain_accepted=explain_accepted
+        known(measurements, counts, findings), recipe=recipe, with_accepted=with_accepted
     )
 
 
-def grade_known(of_device: Known, *, recipe: Recipe, explain_accepted: bool) -> Graded:
+def grade_known(of_device: Known, *, recipe: Recipe, with_accepted: bool) -> Graded:
     """As `grade`, from readings that are sorted for lookup already."""
     if not recipe.grades:
         return Graded(None, "ungraded", (NO_GRADES,), ())
@@ -64,7 +64,7 @@ def grade_known(of_device: Known, *, recipe: Recipe, explain_accepted: bool) -> 
         of_grade = [
             result
             for limit in level.limits
-            for result in _results(level, limit, of_device, recipe, explain_accepted)
+            for result in _results(level, limit, of_device, recipe, with_accepted)
         ]
         results += of_grade
         outcomes = {result.outcome for result in of_grade}
@@ -76,13 +76,14 @@ def grade_known(of_device: Known, *, recipe: Recipe, explain_accepted: bool) -> 
 
 
 def _results(
-    level: Grade, limit: Limit, of_device: Known, recipe: Recipe, explain_accepted: bool
+    level: Grade, limit: Limit, of_device: Known, recipe: Recipe, with_accepted: bool
 ) -> list[LimitResult]:
     """The outcome of one limit, for every place it holds for."""
     results = []
     for place in held(limit, of_device, recipe=recipe):
         if place.why is None and place.reading is not None:
-            results.append(_decided(level, limit, place.reading, recipe, explain_accepted))
+            decided = _decided(level, limit, place.reading, recipe, with_accepted)
+            results += [decided] if decided is not None else []
         else:
             why = place.why or "not measured"
             results.append(_undecided(level, limit, place.scope, why, place.reading))
@@ -90,15 +91,14 @@ def _results(
 
 
 def _decided(
-    level: Grade, limit: Limit, reading: Reading, recipe: Recipe, explain_accepted: bool
-) -> LimitResult:
-    """The outcome of one limit for one reading."""
+    level: Grade, limit: Limit, reading: Reading, recipe: Recipe, with_accepted: bool
+) -> LimitResult | None:
+    """The outcome of one limit for one reading; None for one that is met and not wanted."""
     rule = limit.rule or recipe.decision.kind
     confidence = recipe.decision.confidence
     value, doubt = reading_value(reading), reading.standard_uncertainty
     margin = limit.bound - value if limit.relation == "<=" else value - limit.bound
     if isinstance(reading, DefectCount):
-        probability = conformity_of_count(reading, relation=limit.relation, bound=limit.bound)
         ruled = count_outcome(
             reading,
             relation=limit.relation,
@@ -107,8 +107,6 @@ def _decided(
             rule=rule,
         )
     else:
-        upper, lower = (limit.bound, None) if limit.relation == "<=" else (None, limit.bound)
-        probability = probability_of_conformity(value, doubt, lower=lower, upper=upper)
         ruled = outcome(
             value,
             relation=limit.relation,
@@ -116,18 +114,23 @@ def _decided(
             guard=guard_factor(confidence) * doubt,
             rule=rule,
         )
-    reason = ""
-    if explain_accepted or ruled != "accept":
-        reason = sentence.standing(
-            reading,
-            limit,
-            grade=level.name,
-            outcome=ruled,
-            margin=margin,
-            probability=probability,
-            rule=rule,
-            confidence=confidence,
-        )
+    if ruled == "accept" and not with_accepted:
+        return None
+    if isinstance(reading, DefectCount):
+        probability = conformity_of_count(reading, relation=limit.relation, bound=limit.bound)
+    else:
+        upper, lower = (limit.bound, None) if limit.relation == "<=" else (None, limit.bound)
+        probability = probability_of_conformity(value, doubt, lower=lower, upper=upper)
+    reason = sentence.standing(
+        reading,
+        limit,
+        grade=level.name,
+        outcome=ruled,
+        margin=margin,
+        probability=probability,
+        rule=rule,
+        confidence=confidence,
+    )
     return LimitResult(
         grade=level.name,
         limit=limit,

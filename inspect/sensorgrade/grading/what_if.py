@@ -3,7 +3,7 @@
 from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import combinations
-from math import ceil, floor, inf
+from math import ceil, floor, inf, log10
 
 import numpy as np
 from numpy.typing import NDArray
@@ -85,6 +85,20 @@ def yield_curve(lot: Tightest, *, limit: int) -> YieldCurve:
     else:
         accepted = own.size - np.searchsorted(own, bounds, side="left")
     return YieldCurve(lot.limits[limit], bounds, accepted.astype(np.int64), own.size)
+
+
+def worth_showing(lot: Tightest, *, limit: int, steps: int) -> NDArray[np.float64]:
+    """At most ``steps`` bounds of one limit, evenly spread over the devices, its own among them.
+
+    Each is loosened to few digits, so that it accepts at least the devices it was taken from.
+    """
+    of_limit = lot.limits[limit]
+    own = lot.bounds[:, limit]
+    own = np.sort(own[np.isfinite(own)])
+    places = np.unique(np.linspace(0, max(own.size - 1, 0), steps - 1).astype(int))
+    chosen = own[places] if own.size else own
+    rounded = [loosened(float(one), relation=of_limit.relation) for one in chosen]
+    return np.unique([*rounded, of_limit.bound])
 
 
 @dataclass(frozen=True, slots=True)
@@ -200,13 +214,24 @@ def concessions(lot: Tightest, *, wanted: int) -> Concessions | None:
     return None
 
 
+def loosened(bound: float, *, relation: str, digits: int = 4) -> float:
+    """``bound`` rounded to so many digits to its loose side; whole numbers stay as they are."""
+    if bound == 0.0 or bound == round(bound):
+        return bound
+    step = 10.0 ** (floor(log10(abs(bound))) + 1 - digits)
+    rounded = (ceil if relation == "<=" else floor)(round(bound / step, 6)) * step
+    return float(f"{rounded:.{digits}g}")
+
+
 def _eased(lot: Tightest, chosen: tuple[int, ...], gained: NDArray[np.int64]) -> Concessions:
     """The bounds that accept these devices, and all whom those bounds accept."""
     stated = [limit.bound for limit in lot.limits]
     eased = []
     for column in chosen:
         own = np.append(lot.bounds[gained, column], stated[column])
-        stated[column] = float(own.max() if lot.limits[column].relation == "<=" else own.min())
+        loosest = float(own.max() if lot.limits[column].relation == "<=" else own.min())
+        if loosest != stated[column]:
+            stated[column] = loosened(loosest, relation=lot.limits[column].relation)
         eased.append(Concession(lot.limits[column], stated[column]))
     signs = np.array([1.0 if limit.relation == "<=" else -1.0 for limit in lot.limits])
     now = ~(signs * (lot.bounds - np.array(stated)) > 0.0).any(axis=1)

@@ -246,13 +246,13 @@ class Ledger:
         """Note a device's new file times, after its contents were found unchanged."""
         self._connection.execute("UPDATE devices SET state = ? WHERE folder = ?", (state, folder))
 
-    def results(self, *, with_inputs: bool = True) -> list[DeviceResult]:
+    def results(self, *, in_short: bool = False) -> list[DeviceResult]:
         """Every inspected device in order of serial, as it was recorded.
 
-        Without its inputs a result takes half the memory.
+        ``in_short`` leaves out its inputs and the outcome of each limit, which are half of it.
         """
         with _snapshot(self._connection):
-            return select_results(self._connection, with_inputs=with_inputs)
+            return select_results(self._connection, in_short=in_short)
 
     def failures(self) -> list[Failure]:
         """Every device that could not be inspected, in order of serial."""

@@ -92,7 +92,7 @@ def regrade(folder: Path, *, limits: Path, vocabulary: Vocabulary) -> Regraded:
     if moved:
         devices = with_counts_at(stored, recipe=recipe, moved=moved, names=names)
     graded = tuple(
-        grade_known(device.known, recipe=recipe, explain_accepted=False) for device in devices
+        grade_known(device.known, recipe=recipe, with_accepted=False) for device in devices
     )
     serials = [device.serial for device in stored.devices]
     return Regraded(

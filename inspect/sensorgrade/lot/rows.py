@@ -89,15 +89,25 @@ def _limit_number(connection: sqlite3.Connection, limit: Limit) -> int:
     return int(row[0])
 
 
-def select_results(connection: sqlite3.Connection, *, with_inputs: bool) -> list[DeviceResult]:
-    """Every inspected device in order of serial, as it was recorded, but for inputs left out."""
+def select_results(connection: sqlite3.Connection, *, in_short: bool) -> list[DeviceResult]:
+    """Every inspected device in order of serial, as it was recorded; see `Ledger.results`."""
     limits = {
         number: Limit(*values)
         for number, *values in connection.execute(
             f'SELECT "limit", {", ".join(LIMIT_COLUMNS)} FROM limits'
         )
     }
-    inputs = _by_device(connection, "inputs", InputFile) if with_inputs else defaultdict(list)
+    inputs: defaultdict[int, list[InputFile]] = defaultdict(list)
+    held: defaultdict[int, list[LimitResult]] = defaultdict(list)
+    if not in_short:
+        inputs = _by_device(connection, "inputs", InputFile)
+        held = _by_device(
+            connection,
+            "limit_results",
+            lambda grade, limit, scope, *rest: LimitResult(
+                sys.intern(grade), limits[limit], sys.intern(scope), *rest
+            ),
+        )
     measurements = _by_device(
         connection,
         "measurements",
@@ -109,13 +119,6 @@ def select_results(connection: sqlite3.Connection, *, with_inputs: bool) -> list
         connection,
         "defect_counts",
         lambda kind, scope, *numbers: DefectCount(sys.intern(kind), sys.intern(scope), *numbers),
-    )
-    held = _by_device(
-        connection,
-        "limit_results",
-        lambda grade, limit, scope, *rest: LimitResult(
-            sys.intern(grade), limits[limit], sys.intern(scope), *rest
-        ),
     )
     reasons = _by_device(connection, "reasons", lambda reason: reason)
     findings = _by_device(
