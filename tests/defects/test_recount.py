@@ -116,8 +116,8 @@ def test_what_was_not_kept_is_said_and_not_guessed(kept):
     )
     assert set(found.lacking) == {"hot_pixels", "clusters"}
     sentence = found.lacking["hot_pixels"]
-    assert sentence.startswith("hot at 1 electron/s needs the frames: values of output left")
-    assert "kept down to 1.25 electron/s" in sentence
+    assert sentence.startswith("hot from 1 electron/s on needs the frames: it asks for pixels of")
+    assert sentence.endswith("they were kept down to 1.25")
 
 
 def test_where_there_are_too_many_the_farthest_are_kept(devices, monkeypatch):

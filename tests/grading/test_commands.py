@@ -40,8 +40,30 @@ def test_grade_prints_yields_changes_and_costs(lot):
     assert found.exit_code == 1
     assert "science or better: 2 (66.7 %, 95 % interval 20.8 % to 93.9 %)" in found.output
     assert "S00003: reject -> science" in found.output
-    assert "read noise at most 5 electron: not met by 1, by 1 as the only limit" in found.output
-    assert "read noise <= 5.5 electron in place of 5" in found.output
+    assert "read noise at most 5 electron: missed by 1; 1 miss nothing else" in found.output
+    assert "read noise at most 5.5 electron in place of 5" in found.output
+
+
+def test_grade_shows_yields_against_one_limit_and_two(lot):
+    arguments = (grade.command, lot, "--limits", lot / "limits.yaml", "--vary", "read_noise")
+    found = ran(*arguments).output
+    assert "Devices accepted, read noise at most [electron]" in found
+    rows = [line.split() for line in found.splitlines() if line.startswith("      ")]
+    assert [(row[0], row[1]) for row in rows] == [
+        ("4.1", "1"),
+        ("4.4", "2"),
+        ("5", "2"),
+        ("5.5", "3"),
+    ]
+    assert rows[2][2:] == ["as", "the", "limit", "stands"]
+    two = ran(*arguments, "--vary", "hot_pixels").output
+    assert "down read noise at most [electron], across hot pixels at most" in two
+    last = two.splitlines()[-1].split()
+    assert last == ["5.5", "2", "3", "3"]
+    document = json.loads(ran(*arguments, "--vary", "hot_pixels", "--json").output)
+    assert document["yields_against"]["accepted"][-1] == [2, 3, 3]
+    with pytest.raises(RequestError, match=r"--vary noise: no such limit .* read_noise, hot_pixels"):
+        ran(grade.command, lot, "--limits", lot / "limits.yaml", "--vary", "noise")
 
 
 def test_grade_as_json_and_in_silence(lot):

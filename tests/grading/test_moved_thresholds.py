@@ -109,8 +109,8 @@ def test_a_threshold_below_what_was_kept_leaves_the_device_undecided_and_says_wh
     found = graded_again(run, tmp_path, "stages: {pixels: {hot: 1 electron/s}}\n")
     assert {one.decision for one in found.graded} == {"undecided"}
     (reason,) = (one for one in found.graded[0].reasons if one.startswith("Hot pixels:"))
-    assert "hot at 1 electron/s needs the frames" in reason
-    assert "kept down to 1.25 electron/s" in reason
+    assert "hot from 1 electron/s on needs the frames" in reason
+    assert "they were kept down to 1.25 (" in reason
 
 
 @pytest.mark.parametrize(

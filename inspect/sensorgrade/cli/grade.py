@@ -1,20 +1,22 @@
 """``sensorgrade grade``: stored measurements against other limits, and what the limits cost."""
 
 import json
-from dataclasses import asdict
+from dataclasses import asdict, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import click
 
 if TYPE_CHECKING:
+    from sensorgrade.grading.what_if import YieldCurve, YieldGrid
     from sensorgrade.lot.regrade import Regraded, WhatIf
 
 
 @click.command(
     epilog="\b\nExamples:\n"
     "  sensorgrade grade reports/lot7 --limits tighter.yaml\n"
-    "  sensorgrade grade reports/lot7 --limits recipe.yaml --accept 180 --json\n\n"
+    "  sensorgrade grade reports/lot7 --limits recipe.yaml --accept 180 --json\n"
+    "  sensorgrade grade reports/lot7 --limits recipe.yaml --vary read_noise --vary hot_pixels\n\n"
     "Exit status: 0 every device accepted; 1 some rejected or undecided; 2 the request is wrong."
 )
 @click.argument("run", type=click.Path(path_type=Path))
@@ -28,6 +30,12 @@ if TYPE_CHECKING:
 @click.option(
     "--accept", type=click.IntRange(min=1), help="Find what to concede so that so many reach it."
 )
+@click.option(
+    "--vary",
+    multiple=True,
+    metavar="NAME",
+    help="Show the yield against this limit's bound; give two for one against the other.",
+)
 @click.option("--json", "as_json", is_flag=True, help="Print JSON instead of text.")
 @click.option("--quiet", is_flag=True, help="Print nothing; the exit status tells.")
 @click.pass_context
@@ -37,6 +45,7 @@ def command(
     limits: Path,
     grade_name: str | None,
     accept: int | None,
+    vary: tuple[str, ...],
     as_json: bool,
     quiet: bool,
 ) -> None:
@@ -45,12 +54,15 @@ def command(
     RUN is the folder an inspection wrote to. It is left as it is; the answer is printed: yields
     with 95 % intervals, devices whose grade changes, what each limit costs.
     """
-    from sensorgrade.lot.regrade import regrade, what_if
+    from sensorgrade.errors import RequestError
+    from sensorgrade.lot.regrade import regrade, what_if, yield_against
     from sensorgrade.stages import vocabulary
 
+    if len(vary) > 2:
+        raise RequestError("--vary: yields are shown against one limit or two, not more")
     regraded = regrade(run, limits=limits, vocabulary=vocabulary())
     recipe = regraded.recipe
-    examined = None
+    examined = shown = None
     if recipe.grades:
         examined = what_if(
             regraded.devices,
@@ -58,12 +70,15 @@ def command(
             grade_name=grade_name or recipe.grades[-1].name,
             wanted=accept,
         )
+        shown = yield_against(examined.tightest, vary, recipe=recipe)
     if as_json:
-        click.echo(json.dumps(_document(regraded, examined), indent=1, ensure_ascii=False))
+        document = _document(regraded, examined, shown)
+        click.echo(json.dumps(document, indent=1, ensure_ascii=False))
     elif not quiet:
         _print_grades(regraded)
         if examined is not None:
             _print_costs(examined, accept)
+            _print_yields(shown)
     done = all(one.decision in ("accept", "ungraded") for one in regraded.graded)
     ctx.exit(0 if done else 1)
 
@@ -99,14 +114,15 @@ def _print_grades(regraded: "Regraded") -> None:
 
 def _print_costs(examined: "WhatIf", accept: int | None) -> None:
     from sensorgrade.grading.sentence import allowed
-    from sensorgrade.wording import name_text
+    from sensorgrade.wording import name_text, number_text
 
     click.echo(f"Limits of {examined.grade}, the dearest first")
     for cost in examined.costs:
         if cost.missed:
+            lacking = f", {cost.undecidable} for want of a value" if cost.undecidable else ""
             click.echo(
-                f"  {name_text(cost.limit.name)} {allowed(cost.limit)}: not met by {cost.missed},"
-                f" by {cost.alone} as the only limit, {cost.undecidable} of them without a value"
+                f"  {name_text(cost.limit.name)} {allowed(cost.limit)}: missed by {cost.missed}"
+                f"{lacking}; {cost.alone} miss nothing else"
             )
     if accept is None:
         return
@@ -118,19 +134,49 @@ def _print_costs(examined: "WhatIf", accept: int | None) -> None:
         return
     click.echo(f"To accept {accept} devices, concede")
     for eased in examined.concessions.eased:
-        bound = f"{eased.limit.relation} {eased.bound:.6g} {eased.limit.unit}".rstrip()
-        click.echo(f"  {name_text(eased.limit.name)} {bound} in place of {eased.limit.bound:g}")
+        click.echo(
+            f"  {name_text(eased.limit.name)} {allowed(replace(eased.limit, bound=eased.bound))}"
+            f" in place of {number_text(eased.limit.bound)}"
+        )
     click.echo(
         f"  which accepts {examined.concessions.accepted}, gaining"
         f" {', '.join(examined.concessions.gained)}"
     )
 
 
+def _print_yields(shown: "YieldCurve | YieldGrid | None") -> None:
+    from sensorgrade.grading.sentence import varied
+    from sensorgrade.grading.what_if import YieldCurve
+    from sensorgrade.wording import number_text
+
+    if shown is None:
+        return
+    if isinstance(shown, YieldCurve):
+        click.echo(f"Devices accepted, {varied(shown.limit)}")
+        for bound, accepted in zip(shown.bounds, shown.accepted, strict=True):
+            mark = "  as the limit stands" if bound == shown.limit.bound else ""
+            click.echo(f"  {number_text(bound):>10}  {accepted:>6}{mark}")
+        return
+    click.echo(f"Devices accepted, down {varied(shown.first)}, across {varied(shown.second)}")
+    heads = "".join(f"{number_text(bound):>10}" for bound in shown.second_bounds)
+    click.echo(f"  {'':>10}{heads}")
+    for bound, row in zip(shown.first_bounds, shown.accepted, strict=True):
+        cells = "".join(f"{accepted:>10}" for accepted in row)
+        click.echo(f"  {number_text(bound):>10}{cells}")
+
+
 def _percent(share: float) -> str:
     return f"{100 * share:.1f} %"
 
 
-def _document(regraded: "Regraded", examined: "WhatIf | None") -> dict[str, Any]:
+def _listed(record: dict[str, Any]) -> dict[str, Any]:
+    """Arrays as lists, for JSON."""
+    return {name: getattr(value, "tolist", lambda v=value: v)() for name, value in record.items()}
+
+
+def _document(
+    regraded: "Regraded", examined: "WhatIf | None", shown: "YieldCurve | YieldGrid | None"
+) -> dict[str, Any]:
     return {
         "moved": list(regraded.moved),
         "devices": [
@@ -151,6 +197,7 @@ def _document(regraded: "Regraded", examined: "WhatIf | None") -> dict[str, Any]
             )
         ],
         "yields": [asdict(one) for one in regraded.yields],
+        "yields_against": None if shown is None else _listed(asdict(shown)),
         "lot": None if regraded.lot is None else asdict(regraded.lot),
         "examined": None
         if examined is None

@@ -27,6 +27,7 @@ from sensorgrade.defects.table import FINDERS
 from sensorgrade.defects.thresholds import MOVABLE, NEAR, PixelOptions, judged, significance
 from sensorgrade.defects.zones import in_zone
 from sensorgrade.recipe.model import Zone
+from sensorgrade.wording import number_text
 
 KINDS = (*RANK, "trap column", "cluster")  # by number
 TRAP_COLUMN, CLUSTER = len(RANK), len(RANK) + 1
@@ -278,10 +279,11 @@ def _lacking(
                 scope = layout.regions[one["region"]]
                 where = "" if scope == "device" else f" of {scope}"
                 way = "up" if part == LOW else "down"
+                wanted = sign * max(nearest[place], usual)
                 sentence = (
-                    f"{kind} at {threshold[place]:.4g} {UNITS[part]} needs the frames: values"
-                    f"{where} were kept {way} to {one['reach']:.4g} {UNITS[part]}, and"
-                    f" {NEAR * one['typical']:.2g} of that is doubt"
+                    f"{kind} from {number_text(threshold[place])} {UNITS[part]} on needs the"
+                    f" frames: it asks for pixels{where} {way} to {number_text(wanted)}"
+                    f" {UNITS[part]}, they were kept {way} to {number_text(one['reach'])}"
                 )
                 lacking = found[device[mine[place]]]
                 lacking.setdefault(f"{kind}_pixels", sentence)

@@ -17,6 +17,13 @@ def allowed(limit: Limit) -> str:
     return f"{words} {number_text(limit.bound, 6)}{_unit(limit)}{held}"
 
 
+def varied(limit: Limit) -> str:
+    """``"read noise at most [electron]"``, for a list of bounds."""
+    words = "at most" if limit.relation == "<=" else "at least"
+    unit = f" [{unit_text(limit.unit)}]" if limit.unit else ""
+    return f"{name_text(limit.name)} {words}{unit}"
+
+
 def standing(
     reading: Reading,
     limit: Limit,

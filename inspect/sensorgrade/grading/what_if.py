@@ -74,12 +74,15 @@ class YieldCurve:
     reachable: int
 
 
-def yield_curve(lot: Tightest, *, limit: int) -> YieldCurve:
-    """Yield against the bound of limit number ``limit``."""
+def yield_curve(
+    lot: Tightest, *, limit: int, bounds: NDArray[np.float64] | None = None
+) -> YieldCurve:
+    """Yield against the bound of limit number ``limit``; where it changes, or at ``bounds``."""
     others = np.delete(lot.missed, limit, axis=1).any(axis=1)
     own = lot.bounds[~others, limit]
     own = np.sort(own[np.isfinite(own)])
-    bounds = np.unique(np.append(own, lot.limits[limit].bound))
+    if bounds is None:
+        bounds = np.unique(np.append(own, lot.limits[limit].bound))
     if lot.limits[limit].relation == "<=":
         accepted = np.searchsorted(own, bounds, side="right")
     else:

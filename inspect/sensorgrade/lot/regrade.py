@@ -1,5 +1,6 @@
 """Stored devices held against other limits, in seconds and without any frame."""
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -20,9 +21,14 @@ from sensorgrade.grading.what_if import (
     Concessions,
     Cost,
     Tightest,
+    YieldCurve,
+    YieldGrid,
     concessions,
     costs,
     tightest,
+    worth_showing,
+    yield_curve,
+    yield_grid,
 )
 from sensorgrade.lot.collector import collector_rests
 from sensorgrade.lot.recounting import moved_thresholds, with_counts_at
@@ -118,6 +124,39 @@ class WhatIf:
     costs: tuple[Cost, ...]
     statistics: tuple[LimitStatistics, ...]
     concessions: Concessions | None
+
+
+def yield_against(
+    lot: Tightest, names: Sequence[str], *, recipe: Recipe
+) -> YieldCurve | YieldGrid | None:
+    """Yield against the bounds of one or of two limits, None where none is named.
+
+    Raises
+    ------
+    RequestError
+        The grade has no limit of that name.
+    """
+    places = []
+    for name in names:
+        found = [place for place, limit in enumerate(lot.limits) if limit.name == name]
+        if not found:
+            there = ", ".join(dict.fromkeys(limit.name for limit in lot.limits))
+            raise RequestError(f"--vary {name}: no such limit in {recipe.path}; there are {there}")
+        # A range is two limits: the one named again is its other side.
+        places.append(next((one for one in found if one not in places), found[0]))
+    if not places:
+        return None
+    if len(places) == 1:
+        bounds = worth_showing(lot, limit=places[0], steps=12)
+        return yield_curve(lot, limit=places[0], bounds=bounds)
+    first, second = places
+    return yield_grid(
+        lot,
+        first=first,
+        second=second,
+        first_bounds=worth_showing(lot, limit=first, steps=8),
+        second_bounds=worth_showing(lot, limit=second, steps=6),
+    )
 
 
 @collector_rests()
