@@ -1,5 +1,8 @@
 """Thresholds on pixels moved afterwards: counts and grades are those of an inspection at them."""
 
+import shutil
+import sqlite3
+from contextlib import closing
 from dataclasses import replace
 
 import pytest
@@ -147,3 +150,14 @@ def test_devices_whose_pixels_were_not_kept_are_undecided(run, tmp_path):
     found = graded_again(tmp_path, tmp_path, "stages: {pixels: {hot: 3 electron/s}}\n")
     assert found.graded[0].decision == "undecided"
     assert "its pixels were not kept" in found.graded[0].reasons[0]
+
+
+def test_a_damaged_row_is_told_in_a_sentence(run, tmp_path):
+    shutil.copy(run / "lot.sqlite", tmp_path)
+    with closing(sqlite3.connect(tmp_path / "lot.sqlite")) as connection:
+        connection.execute("UPDATE candidates SET arrays = substr(arrays, 1, 40)")
+        connection.commit()
+    with pytest.raises(RequestError, match=r"candidates is damaged .* inspect that device again"):
+        graded_again(tmp_path, tmp_path, "stages: {pixels: {hot: 3 electron/s}}\n")
+    text = "grades: {a: {hot_pixels: <= 500}}\n"
+    assert len(graded_again(tmp_path, tmp_path, text).graded) == 3

@@ -119,11 +119,13 @@ def _print_costs(examined: "WhatIf", accept: int | None) -> None:
     click.echo(f"Limits of {examined.grade}, the dearest first")
     for cost in examined.costs:
         if cost.missed:
-            lacking = f", {cost.undecidable} for want of a value" if cost.undecidable else ""
-            click.echo(
-                f"  {name_text(cost.limit.name)} {allowed(cost.limit)}: missed by {cost.missed}"
-                f"{lacking}; {cost.alone} miss nothing else"
-            )
+            parts = [f"missed by {cost.missed} device{'s' if cost.missed > 1 else ''}"]
+            if cost.alone:
+                parts.append(f"{cost.alone} of them by this alone")
+            if cost.undecidable:
+                parts.append(f"{cost.undecidable} for want of a value")
+            named = f"{name_text(cost.limit.name)} {allowed(cost.limit)}"
+            click.echo(f"  {named}: {', '.join(parts)}")
     if accept is None:
         return
     if examined.concessions is None:

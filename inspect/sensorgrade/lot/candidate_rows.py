@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from sensorgrade.defects.candidates import CANDIDATE, REACH, SETTLED, Candidates, Layout
+from sensorgrade.errors import RequestError
 from sensorgrade.recipe.model import Section
 
 FORMS = (CANDIDATE, REACH, SETTLED)
@@ -22,11 +23,23 @@ def insert_candidates(connection: sqlite3.Connection, device: int, kept: Candida
 
 
 def select_candidates(connection: sqlite3.Connection) -> dict[int, Candidates]:
-    """The candidates of every device that has any, by its number in the ledger."""
-    return {
-        device: _unpacked(layout, arrays)
-        for device, layout, arrays in connection.execute("SELECT * FROM candidates")
-    }
+    """The candidates of every device that has any, by its number in the ledger.
+
+    Raises
+    ------
+    RequestError
+        A row is damaged.
+    """
+    found = {}
+    for device, layout, arrays in connection.execute("SELECT * FROM candidates"):
+        try:
+            found[device] = _unpacked(layout, arrays)
+        except (ValueError, KeyError, zlib.error) as error:
+            raise RequestError(
+                f"the ledger's row {device} of candidates is damaged ({error}); thresholds on"
+                " pixels cannot move, inspect that device again"
+            ) from error
+    return found
 
 
 def _packed(kept: Candidates) -> bytes:
