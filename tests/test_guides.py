@@ -51,7 +51,7 @@ def test_the_command_lists_and_shows():
 def test_only_known_kinds_of_blocks_are_used():
     for topic in TOPICS:
         kinds = {language for language, _ in BLOCK.findall(guide_text(topic))}
-        assert kinds <= {"sh", "python", "yaml", "text"}, topic
+        assert kinds <= {"sh", "python", "yaml", "toml", "text"}, topic
         assert guide_text(topic).count("```") == 2 * len(BLOCK.findall(guide_text(topic))), topic
 
 

@@ -40,6 +40,7 @@ from sensorgrade.measurement import Finding
 from sensorgrade.recipe.model import Recipe
 from sensorgrade.report.device_page import device_page
 from sensorgrade.report.lot_page import lot_page
+from sensorgrade.report.notebook import notebook_html
 from sensorgrade.stages import measuring_stages
 
 LIBRARIES = ("numpy", "scipy", "astropy", "scikit-image", "numba")
@@ -53,6 +54,9 @@ class Inspection:
     masters: Masters
     defects: Defects
     stages: dict[str, StageResult]
+
+    def _repr_html_(self) -> str:
+        return notebook_html(self.result)
 
 
 def inspect_device(
@@ -152,12 +156,30 @@ def inspect_and_write(
     stage: Callable[[str], None],
     figures: bool = False,
 ) -> DeviceResult:
-    """Inspect one device and write all its files into the folder ``into``.
-
-    With ``figures`` the page's figures are also written as files, into ``into / "figures"``.
-    """
+    """Inspect one device and write all its files into the folder ``into``."""
     made = inspect_device(device, recipe, threads=threads, stage=stage)
     stage("files")
+    write_inspection(made, recipe, into, threads=threads, figures=figures)
+    return made.result
+
+
+def write_inspection(
+    made: Inspection,
+    recipe: Recipe,
+    into: Path,
+    *,
+    threads: int | None = None,
+    figures: bool = False,
+) -> None:
+    """Write result, mask, masters, tables and page of one device into the folder ``into``.
+
+    With ``figures`` the page's figures are also written as files, into ``into / "figures"``.
+
+    Raises
+    ------
+    OSError
+        A file cannot be written; those that were are whole.
+    """
     serial = made.result.serial
     masters = [
         master
@@ -172,7 +194,7 @@ def inspect_and_write(
         stages=made.stages,
         recipe=recipe,
     )
-    with ThreadPoolExecutor(max(1, threads)) as pool:
+    with ThreadPoolExecutor(threads) as pool:
         written = [
             pool.submit(write_master, into / f"master_{master.kind}.fits", master, serial=serial)
             for master in masters
@@ -191,7 +213,6 @@ def inspect_and_write(
         for one in written:
             one.result()
     write_whole(into / "result.json", result_json(made.result))
-    return made.result
 
 
 def inspect_lot(

@@ -34,12 +34,10 @@ def command(
     told apart by serial. A sample of rows of every frame is read; nothing is measured and nothing
     is written.
     """
+    from sensorgrade.api import load_recipe
     from sensorgrade.masters.check import checked
-    from sensorgrade.recipe.library import find_recipe
-    from sensorgrade.recipe.load import load_recipe
-    from sensorgrade.stages import vocabulary
 
-    recipe = load_recipe(find_recipe(recipe_name), vocabulary())
+    recipe = load_recipe(recipe_name)
     devices = []
     for one in checked(sources, recipe):
         devices.append(one)

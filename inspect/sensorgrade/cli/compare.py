@@ -78,14 +78,12 @@ def _repeat(
     as_json: bool,
     quiet: bool,
 ) -> None:
+    from sensorgrade.api import load_recipe
     from sensorgrade.lot.compare_runs import bench_study
-    from sensorgrade.recipe.library import find_recipe
-    from sensorgrade.recipe.load import load_recipe
-    from sensorgrade.stages import vocabulary
 
     recipe = None
     if recipe_name is not None:
-        recipe = load_recipe(find_recipe(recipe_name), vocabulary())
+        recipe = load_recipe(recipe_name)
     named = [text.partition("=") for text in runs]
     studies = bench_study(
         [(name, Path(path)) if equals else ("bench", Path(name)) for name, equals, path in named],

@@ -81,18 +81,16 @@ def command(
     confidence. The plan says what the given frames can decide, and the fewest that would do.
     What the device is like comes from the recipe's limits, from an earlier run, or from --expect.
     """
+    from sensorgrade.api import load_recipe
     from sensorgrade.errors import RequestError
     from sensorgrade.grading.expected_device import expected_device
     from sensorgrade.grading.expected_uncertainty import FrameSet
     from sensorgrade.grading.plan import frame_plan
     from sensorgrade.lot.stored import stored_lot
-    from sensorgrade.recipe.library import find_recipe
-    from sensorgrade.recipe.load import load_recipe
-    from sensorgrade.stages import vocabulary
 
     if unsplit := [text for text in expect if "=" not in text]:
         raise RequestError(f'--expect {unsplit[0]}: expected NAME=VALUE, "read_noise=4 electron"')
-    recipe = load_recipe(find_recipe(recipe_name), vocabulary())
+    recipe = load_recipe(recipe_name)
     device = expected_device(
         recipe,
         like=stored_lot(like).devices if like is not None else (),

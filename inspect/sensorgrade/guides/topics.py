@@ -15,6 +15,7 @@ TOPICS = (
     "measurements",
     "masks-in-reduction",
     "lots-and-clusters",
+    "python-interface",
     "adding-a-stage",
 )
 
