@@ -200,6 +200,36 @@ def test_the_weightiest_reason_stands_first():
     assert found.reasons[0].endswith("; also misses engineering (at most 5.5 electron).")
 
 
+def test_what_leaves_a_grade_open_is_an_undecided_device_s_first_reason():
+    asked = recipe(
+        ("science", [limit("read_noise", "<=", 5.0), limit("dark_current", "<=", 1.0)]),
+        ("engineering", [limit("read_noise", "<=", 9.0), limit("dark_current", "<=", 1.25)]),
+        rule="non-binary",
+    )
+    found = grade(
+        [measured("read_noise", 8.0, 0.1), measured("dark_current", 1.2, 0.1)],
+        [],
+        [],
+        recipe=asked,
+    )
+    assert found.decision == "undecided"
+    dark, noise = found.reasons
+    assert dark.startswith("Dark current is 1.20 ± 0.10")
+    assert dark.endswith("; also leaves open engineering (at most 1.25 electron).")
+    assert noise.startswith("Read noise is 8.00 ± 0.10")
+
+
+def test_a_limit_missed_in_one_grade_and_open_in_another_tells_both():
+    asked = recipe(
+        ("science", [limit("read_noise", "<=", 4.0)]),
+        ("engineering", [limit("read_noise", "<=", 5.0)]),
+        rule="non-binary",
+    )
+    (reason,) = grade([measured("read_noise", 5.1, 0.2)], [], [], recipe=asked).reasons
+    assert "science allows at most 4 electron: 1.1 electron past it" in reason
+    assert reason.endswith("; also leaves open engineering (at most 5 electron).")
+
+
 def test_a_limit_has_its_own_rule():
     asked = recipe(
         ("a", [limit("read_noise", "<=", 5.0, rule="guarded acceptance")]), rule="simple"

@@ -46,7 +46,8 @@ def grade(
         ``decision`` is ungraded when the recipe has no grades. A grade without limits is met by
         every device. ``reasons`` say why the device is not at the top grade and are empty when
         it is: limits missed come before those undecided; among the missed, those also missed in
-        more of the lower grades first, then the farthest past the limit in proportion to it.
+        more of the lower grades first, then the farthest past the limit in proportion to it. Of an
+        undecided device, what leaves a grade open comes before what rules a better one out.
     """
     return grade_known(
         known(measurements, counts, findings), recipe=recipe, with_accepted=with_accepted
@@ -59,7 +60,7 @@ def grade_known(of_device: Known, *, recipe: Recipe, with_accepted: bool) -> Gra
         return Graded(None, "ungraded", (NO_GRADES,), ())
     results: list[LimitResult] = []
     met: str | None = None
-    open_question = False
+    still_open: list[str] = []
     for level in recipe.grades:
         of_grade = [
             result
@@ -70,9 +71,11 @@ def grade_known(of_device: Known, *, recipe: Recipe, with_accepted: bool) -> Gra
         outcomes = {result.outcome for result in of_grade}
         if met is None and outcomes <= {"accept"}:
             met = level.name
-        open_question = open_question or "reject" not in outcomes
-    decision: Decision = "accept" if met else "undecided" if open_question else "reject"
-    return Graded(met, decision, _reasons(results, met, recipe.grades), tuple(results))
+        if "reject" not in outcomes:
+            still_open.append(level.name)
+    decision: Decision = "accept" if met else "undecided" if still_open else "reject"
+    reasons = _reasons(results, met, recipe.grades, still_open)
+    return Graded(met, decision, reasons, tuple(results))
 
 
 def _results(
@@ -164,9 +167,15 @@ def _undecided(
 
 
 def _reasons(
-    results: list[LimitResult], met: str | None, grades: tuple[Grade, ...]
+    results: list[LimitResult],
+    met: str | None,
+    grades: tuple[Grade, ...],
+    still_open: Sequence[str],
 ) -> tuple[str, ...]:
-    """One sentence for each place that keeps the device from a better grade."""
+    """One sentence for each place that keeps the device from a better grade.
+
+    Where no grade is met but some are still open, what stands in their way comes first.
+    """
     missed = [level.name for level in grades]
     if met is not None:
         missed = missed[: missed.index(met)]
@@ -176,7 +185,12 @@ def _reasons(
             limit = result.limit
             key = (limit.name, limit.relation, limit.of, limit.zone, limit.temperature)
             places.setdefault((*key, result.scope), []).append(result)
-    weighed = sorted(places.values(), key=_weight, reverse=True)
+    undecided = still_open if met is None else ()
+    weighed = sorted(
+        places.values(),
+        key=lambda of_place: (any(one.grade in undecided for one in of_place), _weight(of_place)),
+        reverse=True,
+    )
     return tuple(_sentence(of_place) for of_place in weighed)
 
 
@@ -200,12 +214,13 @@ def _excess(result: LimitResult) -> float:
 def _sentence(of_place: list[LimitResult]) -> str:
     """The best grade's sentence, and which lower grades it costs as well."""
     first, *others = of_place
-    costs = [
-        f"{other.grade} ({sentence.allowed(other.limit)})"
-        for other in others
-        if other.outcome == first.outcome
-    ]
-    if not costs:
-        return first.reason
-    verb = "misses" if first.outcome == "reject" else "leaves open"
-    return f"{first.reason.rstrip('.')}; also {verb} {', '.join(costs)}."
+    text = first.reason.rstrip(".")
+    for ruled, verb in (("reject", "misses"), ("undecided", "leaves open")):
+        costs = [
+            f"{other.grade} ({sentence.allowed(other.limit)})"
+            for other in others
+            if other.outcome == ruled
+        ]
+        if costs:
+            text += f"; also {verb} {', '.join(costs)}"
+    return f"{text}."
