@@ -31,6 +31,11 @@ import click
     "--time-limit", type=click.FloatRange(min=1.0), help="Seconds that one device may take."
 )
 @click.option("--fresh", is_flag=True, help="Inspect finished devices again too.")
+@click.option(
+    "--figures",
+    is_flag=True,
+    help="Write the figures of each page as PNG and SVG too, into OUT/SERIAL/figures.",
+)
 @click.option("--watch", is_flag=True, help="Go on and take devices as they become complete.")
 @click.option("--marker", help="With --watch: the file that says a device's folder is complete.")
 @click.option("--json", "as_json", is_flag=True, help="Print JSON instead of text.")
@@ -46,6 +51,7 @@ def command(
     cluster: str | None,
     time_limit: float | None,
     fresh: bool,
+    figures: bool,
     watch: bool,
     marker: str | None,
     as_json: bool,
@@ -96,7 +102,12 @@ def command(
         for devices in batches:
             with shown_progress(quiet=quiet) as report:
                 outcome = inspect_lot(
-                    devices, recipe, ledger=ledger, options=options, report=report
+                    devices,
+                    recipe,
+                    ledger=ledger,
+                    options=options,
+                    report=report,
+                    figures=figures,
                 )
             tell_outcome(outcome, device_lines(ledger), out, quiet=quiet, as_json=as_json)
             if outcome.stopped:

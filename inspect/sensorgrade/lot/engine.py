@@ -193,9 +193,12 @@ class _Work:
         failure, trace = answer.failure, answer.trace
         if answer.result is not None and answer.made is not None:
             try:
-                files = sorted(path.name for path in answer.made.iterdir())
+                made = answer.made
+                files = sorted(
+                    path.relative_to(made).as_posix() for path in made.rglob("*") if path.is_file()
+                )
                 stale = self._ledger.open_folder(device.folder, names=files)
-                settle(answer.made, self._ledger.folder / device.folder, stale=stale)
+                settle(made, self._ledger.folder / device.folder, stale=stale)
             except DeviceError as error:
                 failure = str(error)
             except OSError as error:

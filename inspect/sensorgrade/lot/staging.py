@@ -36,7 +36,7 @@ def remove_strays(folder: Path) -> None:
 
 
 def settle(made: Path, folder: Path, *, stale: Iterable[str]) -> None:
-    """Move every file in ``made`` into the device's ``folder`` and remove the ``stale`` ones.
+    """Move every file below ``made`` into the device's ``folder`` and remove the ``stale`` ones.
 
     Each file appears whole under its name or not at all; other files there are left alone.
 
@@ -51,9 +51,11 @@ def settle(made: Path, folder: Path, *, stale: Iterable[str]) -> None:
         )
     folder.mkdir(exist_ok=True)
     for path in sorted(made.iterdir()):
-        path.replace(folder / path.name)
-    for name in stale:
-        (folder / name).unlink(missing_ok=True)
+        if path.is_dir():
+            settle(path, folder / path.name, stale=())
+        else:
+            path.replace(folder / path.name)
+    _remove_stale(folder, stale)
     _flush(folder)
     _flush(folder.parent)
 
@@ -61,9 +63,19 @@ def settle(made: Path, folder: Path, *, stale: Iterable[str]) -> None:
 def clear(folder: Path, *, stale: Iterable[str]) -> None:
     """Remove the ``stale`` files from a device's folder, and the folder if nothing is left."""
     with suppress(OSError):  # the user's own files are there, or it never was, or is no folder
-        for name in stale:
-            (folder / name).unlink(missing_ok=True)
+        _remove_stale(folder, stale)
         folder.rmdir()
+
+
+def _remove_stale(folder: Path, stale: Iterable[str]) -> None:
+    """Remove files by their names below ``folder``, and the folders they leave empty there."""
+    inner = set()
+    for name in stale:
+        (folder / name).unlink(missing_ok=True)
+        inner.add((folder / name).parent)
+    for left in inner - {folder}:
+        with suppress(OSError):  # it is not empty, or not there
+            left.rmdir()
 
 
 def _flush(folder: Path) -> None:
