@@ -13,6 +13,9 @@ if TYPE_CHECKING:
     from sensorgrade.lot.compare_runs import BenchStudy, DefectsCompared, RunsCompared
 
 
+LISTED = 20  # new or gone defects of a device that are printed without --all
+
+
 @click.command(
     epilog="\b\nExamples:\n"
     "  sensorgrade compare reports/before reports/after\n"
@@ -98,7 +101,7 @@ def _repeat(
 
 
 def _print_changes(found: "RunsCompared", every: bool) -> None:
-    from sensorgrade.wording import doubt_text, name_text, unit_text
+    from sensorgrade.wording import doubt_text, name_text, number_text, unit_text
 
     numbers = found.numbers
     for label, serials in (("before", numbers.only_before), ("after", numbers.only_after)):
@@ -111,10 +114,12 @@ def _print_changes(found: "RunsCompared", every: bool) -> None:
     for change in shown:
         place = "" if change.scope == "device" else f" of {change.scope}"
         unit = f" {unit_text(change.unit)}".rstrip()
-        deviation = "" if change.deviation is None else f" ({change.deviation:+.1f} uncertainties)"
+        deviation = ""
+        if change.deviation is not None:
+            deviation = f" ({change.deviation:+.1f} uncertainties)".replace("-", "−")
         click.echo(
-            f"  {change.serial}: {name_text(change.name)}{place} {change.before:.5g} ->"
-            f" {change.after:.5g}{unit}, by"
+            f"  {change.serial}: {name_text(change.name)}{place}"
+            f" {number_text(change.before, 5)} -> {number_text(change.after, 5)}{unit}, by"
             f" {doubt_text(change.difference, change.standard_uncertainty, '')}{unit}{deviation}"
         )
     for one in found.defects:
@@ -125,7 +130,8 @@ def _print_changes(found: "RunsCompared", every: bool) -> None:
         explained = "" if name.deviation is None else f"; {name.deviation:.2f} of the stated doubt"
         click.echo(
             f"  {name_text(name.name)}: {doubt_text(name.bias, name.bias_uncertainty, '')}{unit} on"
-            f" average, 95 % of differences from {name.low:.3g} to {name.high:.3g}{unit}{explained}"
+            f" average, 95 % of differences from"
+            f" {number_text(name.low, 3)} to {number_text(name.high, 3)}{unit}{explained}"
         )
 
 
@@ -134,7 +140,7 @@ def _print_defects(one: "DefectsCompared", every: bool) -> None:
     if not (change.new or change.gone or every):
         return
     click.echo(
-        f"  {one.serial}: {len(change.kept)} defects kept, {len(change.new)} new"
+        f"  {one.serial}: defects: {len(change.kept)} kept, {len(change.new)} new"
         f" ({len(change.doubtful_new)} doubtful), {len(change.gone)} gone"
         f" ({len(change.doubtful_gone)} doubtful)"
     )
@@ -142,12 +148,14 @@ def _print_defects(one: "DefectsCompared", every: bool) -> None:
         ("new", one.after, change.new, change.doubtful_new),
         ("gone", one.before, change.gone, change.doubtful_gone),
     ):
-        for row in rows:
+        for row in rows if every else rows[:LISTED]:
             hedge = ", near its threshold" if row in doubtful else ""
             click.echo(
                 f"    {label}: {table['kind'][row]} at x {table['column'][row] + 1},"
                 f" y {table['row'][row] + 1}{hedge}"
             )
+        if len(rows) > LISTED and not every:
+            click.echo(f"    {label}: {len(rows) - LISTED} more; --all or --json tells them all")
 
 
 def _print_study(study: "BenchStudy") -> None:

@@ -113,8 +113,8 @@ def _print_grades(regraded: "Regraded") -> None:
 
 
 def _print_costs(examined: "WhatIf", accept: int | None) -> None:
-    from sensorgrade.grading.sentence import allowed
-    from sensorgrade.wording import name_text, number_text
+    from sensorgrade.grading.sentence import stated
+    from sensorgrade.wording import number_text
 
     click.echo(f"Limits of {examined.grade}, the dearest first")
     for cost in examined.costs:
@@ -124,8 +124,7 @@ def _print_costs(examined: "WhatIf", accept: int | None) -> None:
                 parts.append(f"{cost.alone} of them by this alone")
             if cost.undecidable:
                 parts.append(f"{cost.undecidable} for want of a value")
-            named = f"{name_text(cost.limit.name)} {allowed(cost.limit)}"
-            click.echo(f"  {named}: {', '.join(parts)}")
+            click.echo(f"  {stated(cost.limit)}: {', '.join(parts)}")
     if accept is None:
         return
     if examined.concessions is None:
@@ -137,7 +136,7 @@ def _print_costs(examined: "WhatIf", accept: int | None) -> None:
     click.echo(f"To accept {accept} devices, concede")
     for eased in examined.concessions.eased:
         click.echo(
-            f"  {name_text(eased.limit.name)} {allowed(replace(eased.limit, bound=eased.bound))}"
+            f"  {stated(replace(eased.limit, bound=eased.bound))}"
             f" in place of {number_text(eased.limit.bound)}"
         )
     click.echo(

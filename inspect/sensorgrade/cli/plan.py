@@ -130,21 +130,22 @@ def _print_device(device: "ExpectedDevice") -> None:
 
 def _line(plan: "LimitPlan", given: "FrameSet", power: float) -> str:
     """One limit's plan in one paragraph."""
-    from sensorgrade.grading.sentence import allowed
-    from sensorgrade.wording import name_text, unit_text
+    from sensorgrade.grading.sentence import percent, stated
+    from sensorgrade.wording import number_text, unit_text
 
     unit = f" {unit_text(plan.limit.unit)}".rstrip()
-    head = f"{plan.grade}: {name_text(plan.limit.name)} {allowed(plan.limit)}"
+    head = f"{plan.grade}: {stated(plan.limit)}"
     if plan.given is None and plan.enough is None:
         return f"{head}\n  {plan.note}"
-    text = f"{head}\n  needs u = {plan.needed:.2g}{unit} to decide {plan.distance:.3g}{unit} inside"
+    text = f"{head}\n  needs u = {number_text(plan.needed, 2)}{unit} to decide"
+    text += f" {number_text(plan.distance, 3)}{unit} inside"
     if plan.given is None or plan.chance is None:
         text += "; the given frames cannot measure it"
     else:
         text += (
-            f"; the given frames reach {plan.given:.2g}{unit}, decide it with"
-            f" {100 * plan.chance:.3g} % chance, and anything {plan.decidable:.3g}{unit} inside"
-            f" with {power:g} %"
+            f"; the given frames reach {number_text(plan.given, 2)}{unit}, decide it with"
+            f" {percent(plan.chance)} chance, and anything"
+            f" {number_text(plan.decidable or 0.0, 3)}{unit} inside with {power:g} %"
         )
     if plan.enough is None:
         return f"{text}\n  {plan.note}"

@@ -17,11 +17,23 @@ def allowed(limit: Limit) -> str:
     return f"{words} {number_text(limit.bound, 6)}{_unit(limit)}{held}"
 
 
+def stated(limit: Limit) -> str:
+    """``"read noise of output left at most 5 electron"``: a limit with the place it holds for."""
+    return f"{_limited(limit)} {allowed(limit)}"
+
+
 def varied(limit: Limit) -> str:
     """``"read noise at most [electron]"``, for a list of bounds."""
     words = "at most" if limit.relation == "<=" else "at least"
     unit = f" [{unit_text(limit.unit)}]" if limit.unit else ""
-    return f"{name_text(limit.name)} {words}{unit}"
+    return f"{_limited(limit)} {words}{unit}"
+
+
+def _limited(limit: Limit) -> str:
+    place = [f"zone {limit.zone}"] if limit.zone is not None else []
+    place += [limit.scope] if limit.scope is not None else []
+    of = {"every": "", "worst": ", worst of all,", "mean": ", mean of all,"}[limit.of]
+    return f"{name_text(limit.name)}{' of ' + ', '.join(place) if place else ''}{of}"
 
 
 def standing(
