@@ -112,6 +112,37 @@ def test_read_noise_near_its_limit(outside):
     )
 
 
+def test_students_factor_for_few_degrees(outside):
+    # A reading so many u inside a limit conforms with 97.5 % (k for 95 %) and 97.725 % (95.45 %).
+    outside(
+        "conformance probability at t = 2.570582 and 2.648654, 5 degrees of freedom",
+        source="JCGM 100:2008, table G.2",
+        standing="from memory",
+        expected=[0.975, 0.97725],
+        found=[
+            probability_of_conformity(-t, 1.0, upper=0.0, degrees=5) for t in (2.570582, 2.648654)
+        ],
+        atol=1e-6,
+    )
+
+
+def test_parts_per_million_beyond_a_limit(outside):
+    outside(
+        "parts per million beyond a limit at Cpk 1, 1.33, 1.67",
+        source="tables of the normal integral in handbooks of process capability",
+        standing="derived",
+        expected=[1349.9, 33.04, 0.272],
+        found=[
+            1e6
+            * probability_of_conformity(
+                capability(0.0, 1.0, 30, upper=3 * c).index * 3, 1.0, upper=0.0
+            )
+            for c in (1.0, 1.33, 1.67)
+        ],
+        rtol=2e-3,
+    )
+
+
 @pytest.mark.parametrize(
     "what, guard, expected",
     [
@@ -207,6 +238,23 @@ def test_counts_against_the_poisson_and_the_binomial(outside):
         ],
         atol=1e-12,
     )
+    # The exact limits of a mean when 0, 1, 3, 10 were counted leave 2.5 % in each tail.
+    counted, low, high = (0, 1, 3, 10), (0.02532, 0.61867, 4.79539), (3.68888, 5.57164, 8.76727)
+    outside(
+        "tails of a count at its exact 95 % limits, 0, 1, 3, 10 counted",
+        source="exact Poisson limits, tables in handbooks of statistics",
+        standing="derived",
+        expected=[0.025] * 7,
+        found=[
+            count_probability(DefectCount("hot", "device", 0, mean, mean**0.5), at_most=n)
+            for n, mean in zip(counted, (*high, 18.39036), strict=True)
+        ]
+        + [
+            count_probability(DefectCount("hot", "device", 0, mean, mean**0.5), at_least=n)
+            for n, mean in zip(counted[1:], low, strict=True)
+        ],
+        atol=1e-5,
+    )
     bounds = range(30, 71)
     outside(
         "distribution of a count of 100 even chances",
@@ -218,6 +266,27 @@ def test_counts_against_the_poisson_and_the_binomial(outside):
             for n in bounds
         ],
         atol=1e-3,
+    )
+
+
+@pytest.mark.parametrize("kind, low, high", [("sure", 0.8, 1.0), ("open", 0.0, 1.0)])
+def test_counts_against_the_sum_of_unlike_chances(outside, kind, low, high):
+    chances = np.random.default_rng(3).uniform(low, high, 60)
+    count = DefectCount(
+        "hot",
+        "device",
+        int(np.sum(chances >= 0.5)),
+        float(chances.sum()),
+        float(np.sqrt(np.sum(chances * (1 - chances)))),
+    )
+    bounds = range(20, 61)
+    outside(
+        f"distribution of a count of 60 {kind} pixels, chances {low:g} to {high:g}",
+        source="scipy.stats.poisson_binom",
+        standing="library",
+        expected=stats.poisson_binom.cdf(bounds, chances),
+        found=[count_probability(count, at_most=n) for n in bounds],
+        atol=0.015,
     )
 
 
@@ -403,6 +472,30 @@ def test_arrows_of_the_sampling_table_lead_to_their_own_sample_size(outside):
         standing="confirmed",
         expected=[(13, 0), (50, 1)],
         found=[(plan.size, plan.accept) for plan in (standard_plan(n, 1.0) for n in (120, 200))],
+    )
+
+
+# Lot sizes at both ends of each code letter, level II, with the letter's sample size.
+LETTERS = [
+    ("D", 26, 50, 8), ("E", 51, 90, 13), ("F", 91, 150, 20), ("G", 151, 280, 32),
+    ("H", 281, 500, 50), ("J", 501, 1200, 80), ("K", 1201, 3200, 125), ("L", 3201, 10_000, 200),
+    ("M", 10_001, 35_000, 315),
+]  # fmt: skip
+
+
+def test_code_letters(outside):
+    # A quality limit at which the letter's own cell has a plan, so that no arrow is followed.
+    own = {letter: quality_limit for quality_limit, cells in CELLS.items() for letter in cells}
+    outside(
+        "sample size at both ends of the lot sizes of code letters D to M",
+        source=f"{ISO}, table 1, level II",
+        standing="confirmed",
+        expected=[size for *_, size in LETTERS for _ in "ab"],
+        found=[
+            standard_plan(lot, own[letter]).size
+            for letter, first, last, _ in LETTERS
+            for lot in (first, last)
+        ],
     )
 
 
