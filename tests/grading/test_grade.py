@@ -230,6 +230,25 @@ def test_a_limit_missed_in_one_grade_and_open_in_another_tells_both():
     assert reason.endswith("; also leaves open engineering (at most 5 electron).")
 
 
+@pytest.mark.parametrize(
+    "expected, doubt, sentence",
+    [
+        (152.0, 0.0, "Hot pixels: 152 found; a allows at most 40: 112 past it."),
+        (152.01, 0.004, "Hot pixels: 152 found; a allows at most 40: 112 past it."),
+        (
+            150.2,
+            1.4,
+            "Hot pixels: 152 found (150.2 ± 1.4 by their probabilities); a allows at most 40: 112"
+            " past it (80.0 standard uncertainties).",
+        ),
+    ],
+)
+def test_a_sure_count_is_told_without_its_doubt(expected, doubt, sentence):
+    asked = recipe(("a", [limit("hot_pixels", "<=", 40, "")]))
+    found = grade([], [counted("hot_pixels", 152, expected, doubt)], [], recipe=asked)
+    assert found.reasons == (sentence,)
+
+
 def test_a_limit_has_its_own_rule():
     asked = recipe(
         ("a", [limit("read_noise", "<=", 5.0, rule="guarded acceptance")]), rule="simple"

@@ -8,6 +8,11 @@ from sensorgrade.grading.selection import Reading
 from sensorgrade.recipe.model import Limit
 from sensorgrade.wording import doubt_text, name_text, number_text, unit_text
 
+BEYOND_DOUBT = 1e-5  # of a margin: an uncertainty below that is not worth a comparison
+
+
+PLAIN = 0.05  # a count so sure is told as found, without its doubt
+
 
 @cache
 def allowed(limit: Limit) -> str:
@@ -52,7 +57,8 @@ def standing(
     distance = f"{number_text(abs(margin), 3)}{_unit(limit)} {side}"
     if margin == 0:
         distance = "exactly on it"
-    if reading.standard_uncertainty > 0:
+    plain = isinstance(reading, DefectCount) and reading.standard_uncertainty < PLAIN
+    if not plain and reading.standard_uncertainty > BEYOND_DOUBT * abs(margin) > 0:
         distance += f" ({abs(margin) / reading.standard_uncertainty:.1f} standard uncertainties)"
     text = f"{_subject(reading, limit)}; {grade} allows {allowed(limit)}: {distance}"
     return text + _ruling(outcome, margin, probability, rule, confidence) + "."
@@ -67,6 +73,8 @@ def _subject(reading: Reading, limit: Limit) -> str:
     doubt = reading.standard_uncertainty
     named = _place(limit.name, reading.scope)
     if isinstance(reading, DefectCount):
+        if max(doubt, abs(reading.expected - reading.found)) < PLAIN:
+            return f"{named}: {reading.found} found"
         return (
             f"{named}: {reading.found} found ({doubt_text(reading.expected, doubt, '')} by their"
             " probabilities)"
