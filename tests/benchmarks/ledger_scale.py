@@ -108,9 +108,16 @@ def section(devices: int) -> list[str]:
         record = float(subprocess.run(fill, check=True, capture_output=True, text=True).stdout)
         size = (year / "lot.sqlite").stat().st_size
         recipe = Path(__file__).parents[2] / "recipes" / "demo.yaml"
+        moved = work / "moved.yaml"
+        moved.write_text("stages: {pixels: {hot: 3 electron/s}}\n")
         rows = [
             ("lot page", "10 s, 1024 MiB", measured(PAGE, year)),
             ("`grade`", "5 s, 1024 MiB", measured(COMMAND, "grade", year, "--limits", recipe)),
+            (
+                "`grade`, hot threshold moved",
+                "5 s, 1024 MiB",
+                measured(COMMAND, "grade", year, "--limits", moved),
+            ),
             ("`lot`", "", measured(COMMAND, "lot", year)),
             ("`lot --wafers`", "", measured(COMMAND, "lot", year, "--wafers")),
             ("`lot --csv`", "", measured(COMMAND, "lot", year, "--csv", work / "lot.csv")),
