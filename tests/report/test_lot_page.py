@@ -185,3 +185,13 @@ def test_devices_taken_at_one_time_have_no_course():
 
 def test_the_data_is_json_that_any_reader_takes(made):
     json.loads(json.dumps(made[2].data, allow_nan=False))
+
+
+def test_wafers_stand_in_the_order_of_their_numbers():
+    results, recipe = lot(3)
+    wafers = ("W10", "W9", "W100")
+    results = [replace(one, wafer=name) for one, name in zip(results, wafers, strict=True)]
+    page = lot_data(results, failures=[], recipe=recipe, name="lot 7")
+    assert [one.wafer for one in page.wafers] == ["W9", "W10", "W100"]
+    assert [one.part for one in page.wafer_parts] == ["W9", "W10", "W100"]
+    assert dict(page.facts)["Wafers"] == "W9, W10, W100"

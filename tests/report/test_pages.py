@@ -15,6 +15,7 @@ from sensorgrade.report.device_page import device_page
 from sensorgrade.report.lot_data import LotPage
 from sensorgrade.report.lot_page import lot_page
 from sensorgrade.report.page import environment
+from sensorgrade.report.scale import Scale
 
 HOSTILE = (
     "<script>alert(1)</script>",
@@ -205,3 +206,25 @@ def test_a_device_without_masters_and_defects_has_a_page(sample):
     )
     assert "No defect was found." in text
     assert "There is no master dark" in text
+
+
+@pytest.mark.parametrize(
+    ("low", "high", "label", "shown", "texts"),
+    [
+        (0.84e-6, 1.12e-6, "CTI [1]", "CTI [10⁻⁶]", ("0.9", "1.0", "1.1")),
+        (0, 240e3, "signal [electron]", "signal [10³ electron]", ("0", "100", "200")),
+        (0, 60, "light [s]", "light [s]", ("0", "20", "40", "60")),
+        (0, 3e6, "pixels", "pixels [10⁶]", ("0", "1", "2", "3")),
+    ],
+)
+def test_the_power_of_ten_of_an_axis_stands_once_in_its_label(low, high, label, shown, texts):
+    axis = Scale(low, high, log=False)
+    assert axis.label(label, 4) == shown
+    assert tuple(text for _, text in axis.ticks(4)) == texts
+
+
+@pytest.mark.parametrize("high", [1.6, 2.5, 4, 9.9, 80])
+def test_a_short_logarithmic_axis_has_three_ticks_at_their_places(high):
+    ticks = Scale(1.05, high, log=True).ticks(6)
+    assert len(ticks) >= 3
+    assert all(float(text) == pytest.approx(value) for value, text in ticks)

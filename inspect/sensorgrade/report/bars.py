@@ -59,6 +59,8 @@ def bar_groups(graded: Graded) -> tuple[BarGroup, ...]:
 
 def _standing(outcomes: Sequence[str]) -> str:
     missed, open_ = outcomes.count("reject"), outcomes.count("undecided")
+    if not missed and not open_ and len(outcomes) == 1:
+        return "met: its one limit"
     if missed:
         return f"missed: {missed} of {len(outcomes)} limits not met" + (
             f", {open_} undecided" if open_ else ""

@@ -1,5 +1,6 @@
 """What a lot's page holds, gathered from the results of its devices."""
 
+import re
 from collections import Counter
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
@@ -124,7 +125,7 @@ def lot_data(
     accepted = sum(one.decision == "accept" for one in graded)
     inspected = len(results)
     script = static_text("numbers.js", "lot_table.js", "lot_what_if.js", "lot_wafers.js")
-    placed = dies(lines)
+    placed = sorted(dies(lines), key=lambda die: _numbered(die.wafer))
     taken = np.array([np.nan if one.taken is None else one.taken for one in results])
     figures = [
         (bool(limits_on(one.name, recipe.grades)), _figures(one, index, taken, recipe))
@@ -175,10 +176,10 @@ def _facts(
 ) -> tuple[tuple[str, str], ...]:
     """Label and text, only of what is known."""
     known = {"Devices": str(len(lines))}
-    lots = sorted({line.lot for line in lines if line.lot is not None})
+    lots = sorted({line.lot for line in lines if line.lot is not None}, key=_numbered)
     if lots:
         known["Lot" if len(lots) == 1 else "Lots"] = _listed(lots)
-    wafers = sorted({line.wafer for line in lines if line.wafer is not None})
+    wafers = sorted({line.wafer for line in lines if line.wafer is not None}, key=_numbered)
     if wafers:
         known["Wafer" if len(wafers) == 1 else "Wafers"] = _listed(wafers)
     known["Recipe"] = recipe.name
@@ -187,6 +188,14 @@ def _facts(
         known["First frame"] = f"{time_text(min(times))} UTC"
         known["Last device"] = f"{time_text(max(times))} UTC"
     return tuple(known.items())
+
+
+def _numbered(name: str) -> list[tuple[int, str]]:
+    """A name's place in order, numbers in it by their values: W9 comes before W10."""
+    return [
+        (int(part) if index % 2 else 0, part)
+        for index, part in enumerate(re.split("([0-9]{1,18})", name))
+    ]
 
 
 def _listed(names: Sequence[str]) -> str:
@@ -260,7 +269,8 @@ def _clustered(found: Clustering) -> str:
     if found.expected == 0:
         return "Too few dies without a grade to say whether they stand together."
     text = (
-        f"{found.pairs} pairs of neighbouring dies both have no grade; chance would give"
+        f"{found.pairs} {'pair' if found.pairs == 1 else 'pairs'} of neighbouring dies without a"
+        " grade; chance would give"
         f" {found.expected:.1f} ± {found.spread:.1f}"
     )
     if found.probability < 0.01:

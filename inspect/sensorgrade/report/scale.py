@@ -7,7 +7,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from sensorgrade.report.plot import Axis, Series
-from sensorgrade.wording import SUPERSCRIPTS
+from sensorgrade.wording import SUPERSCRIPTS, number_text
+
+FEWEST_TICKS = 3
 
 
 @dataclass(frozen=True, slots=True)
@@ -73,15 +75,20 @@ class Scale:
 
 
 def _decades(low: float, high: float, most: int) -> list[tuple[float, str]]:
-    """Powers of ten, thinned; where the range holds fewer than two, also 2 and 5 times them."""
+    """Powers of ten, thinned; where the range holds fewer than two, values between them."""
     first, last = math.floor(math.log10(low)), math.ceil(math.log10(high))
     powers = range(first, last + 1)
     inside = [p for p in powers if low * (1 - 1e-9) <= 10.0**p <= high * (1 + 1e-9)]
     if len(inside) >= 2:
         stride = max(1, math.ceil(len(inside) / most))
         return [(10.0**p, _power_text(p)) for p in inside[::stride]]
-    values = [f * 10.0**p for p in powers for f in (1, 2, 5)]
-    return [(v, f"{v:g}") for v in values if low * (1 - 1e-9) <= v <= high * (1 + 1e-9)]
+    for factors in ((1, 2, 5), (1, 2, 3, 4, 5, 6, 8)):
+        values = [f * 10.0**p for p in powers for f in factors if low <= f * 10.0**p <= high]
+        if len(values) >= FEWEST_TICKS:
+            break
+    else:
+        _, values, _ = Scale(low, high, log=False)._round_values(most)
+    return [(value, number_text(value)) for value in values]
 
 
 def _power_text(power: int) -> str:

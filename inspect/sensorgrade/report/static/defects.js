@@ -63,7 +63,7 @@ function line(index) {
   cell(row, "number", `${withDoubt(defects.value[index], defects.uncertainty[index])} ${unit}`);
   cell(row, "number", defects.significance[index] === null ? "—" : shortNumber(defects.significance[index], 3));
   cell(row, "number", defects.probability[index] === null ? "—" : `${shortNumber(100 * defects.probability[index], 3)} %`);
-  cell(row, "", defects.outputs[defects.output[index]]);
+  if (defects.outputs.some(Boolean)) cell(row, "", defects.outputs[defects.output[index]]);
   if (defects.zones.some(Boolean)) cell(row, "", defects.zones[defects.zone[index]]);
   row.addEventListener("click", () => {
     body.querySelectorAll(".picked").forEach((other) => other.classList.remove("picked"));
