@@ -322,3 +322,19 @@ def test_a_clock_that_jumps_changes_no_result_and_repeats_no_device(bench, tmp_p
     assert {path: path.stat().st_mtime_ns for path in out.rglob("result.json")} == before
     with read_ledger(out) as ledger:
         assert [one.ending for one in ledger.runs()] == ["finished", "finished"]
+
+
+@pytest.mark.nightly
+def test_runs_that_start_together_share_compiled_code_and_agree_to_the_byte(
+    bench, tmp_path, monkeypatch
+):
+    monkeypatch.setenv("NUMBA_CACHE_DIR", str(tmp_path / "kernels"))
+    runs = [started(bench, tmp_path / f"{number}" / "out") for number in range(4)]
+    for run_ in runs:
+        _, error = run_.communicate(timeout=300)
+        assert run_.returncode == 1, error
+        assert "Traceback" not in error
+    expected = tree(bench / "out")
+    for number in range(4):
+        assert tree(tmp_path / f"{number}" / "out") == expected
+    assert list((tmp_path / "kernels").rglob("*.nbi"))

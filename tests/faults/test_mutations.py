@@ -17,13 +17,17 @@ import pytest
 import tifffile
 from astropy.io import fits
 
+from faults.small_sensors import write_recipe, write_sensor
 from frames.recipes import recipe_with
 from frames.written import write_fits
 from recipe.vocabulary_for_tests import VOCABULARY
-from sensorgrade.errors import RequestError
+from sensorgrade.errors import DeviceError, RequestError
+from sensorgrade.frames.inventory import find_devices
+from sensorgrade.inspection import inspect_device
 from sensorgrade.masters.check import checked
 from sensorgrade.recipe.load import load_recipe
 from sensorgrade.recipe.model import RawBinary
+from sensorgrade.stages import vocabulary
 
 LONGEST = 5  # s
 MOST_MEMORY = 1 << 30  # bytes, resident
@@ -96,11 +100,13 @@ def mutated(content: bytes, rng: np.random.Generator) -> bytes:
     return bytes(data)
 
 
-def numbers(count: int) -> list[object]:
+def numbers(count: int, *, always: int = 250) -> list[object]:
     """Case numbers in runs of 50: a few always, the rest only nightly."""
     runs = [range(start, start + 50) for start in range(0, count, 50)]
     return [
-        pytest.param(run, marks=[pytest.mark.nightly] if run.start >= 250 else [], id=str(run[0]))
+        pytest.param(
+            run, marks=[pytest.mark.nightly] if run.start >= always else [], id=str(run[0])
+        )
         for run in runs
     ]
 
@@ -149,3 +155,29 @@ def test_recipes_with_bytes_changed_never_crash(tmp_path, run):
                 load_recipe(path, VOCABULARY)
             except RequestError as error:
                 assert all(line.isprintable() for line in str(error).splitlines())
+
+
+@pytest.mark.parametrize("run", numbers(600, always=50))
+def test_inspections_of_frames_with_bytes_changed_never_crash(tmp_path, run):
+    """The frames that a look lets through go on to masters, measurements and defects."""
+    folder = write_sensor(tmp_path / "S0", "S0")
+    recipe = load_recipe(write_recipe(tmp_path / "recipe.yaml"), vocabulary())
+    paths = sorted(folder.iterdir())
+    usual = {path: path.read_bytes() for path in paths}
+    for device in find_devices([folder], recipe):
+        inspect_device(device, recipe)  # compiled code is there from here on
+    for number in run:
+        rng = np.random.default_rng(2 * 10**6 + number)
+        chosen = [paths[at] for at in rng.integers(0, len(paths), int(rng.integers(1, 4)))]
+        for path in chosen:
+            path.write_bytes(mutated(usual[path], rng))
+        with bounded():
+            try:
+                for device in find_devices([folder], recipe):
+                    made = inspect_device(device, recipe)
+                    assert made.result.graded.decision in ("accept", "reject", "undecided")
+            except (DeviceError, RequestError) as error:
+                assert str(error).isprintable()
+        for path in chosen:
+            path.write_bytes(usual[path])
+    assert resource.getrusage(resource.RUSAGE_SELF).ru_maxrss * 1024 < MOST_MEMORY

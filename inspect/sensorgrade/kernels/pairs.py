@@ -29,7 +29,7 @@ def load_tile(band, row, rows, base, width, step, swap, flip, tile):
     return pivot
 
 
-@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+@njit(nogil=True, cache=True, forceinline=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
 def sum_and_largest(values, n):
     """Sum and largest of the first ``n`` samples."""
     found = np.float32(0.0)
@@ -40,7 +40,7 @@ def sum_and_largest(values, n):
     return found, largest
 
 
-@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+@njit(nogil=True, cache=True, forceinline=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
 def centred_moments(first, second, difference, n, width, mean_a, mean_b, out):
     """Moments of a tile from which nothing is left out.
 

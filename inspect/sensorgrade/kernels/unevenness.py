@@ -9,8 +9,12 @@ from numba import njit
 
 RUN = 64  # rows that a single-precision sum of columns may run over
 
+# Sums may be taken in any order. Such loops are always inlined: a copy of their own, compiled
+# otherwise than the one within the caller, would be called by some runs and not by others.
+LOOSE = {"reassoc", "contract", "nnan", "nsz"}
 
-@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+
+@njit(nogil=True, cache=True, forceinline=True, fastmath=LOOSE)
 def surface_row(coefficients, row_basis, column_basis, row, surface):  # type: ignore[no-untyped-def]
     """One row of the surface sum C[a, b] p_a(row) q_b(column), into ``surface`` (N,) float32.
 
@@ -28,7 +32,7 @@ def surface_row(coefficients, row_basis, column_basis, row, surface):  # type: i
             surface[x] += single * line[x]
 
 
-@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+@njit(nogil=True, cache=True, forceinline=True, fastmath=LOOSE)
 def departures(image, base, surface, relative, value):  # type: ignore[no-untyped-def]
     """``image - base - surface``, over the surface when ``relative``, into ``value`` (N,)."""
     if relative:
@@ -39,14 +43,14 @@ def departures(image, base, surface, relative, value):  # type: ignore[no-untype
             value[x] = image[x] - base[x] - surface[x]
 
 
-@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+@njit(nogil=True, cache=True, forceinline=True, fastmath=LOOSE)
 def less_lines(value, offset, column_offset):  # type: ignore[no-untyped-def]
     """Subtract the row's offset and the columns' from ``value``."""
     for x in range(value.shape[0]):
         value[x] -= offset + column_offset[x]
 
 
-@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+@njit(nogil=True, cache=True, forceinline=True, fastmath=LOOSE)
 def temporal_row(variance, count, other_variance, other_count, out):  # type: ignore[no-untyped-def]
     """Temporal variance of the difference of two means, into ``out``; a count of 0 is as 1."""
     for x in range(out.shape[0]):
@@ -54,7 +58,7 @@ def temporal_row(variance, count, other_variance, other_count, out):  # type: ig
         out[x] = first + other_variance[x] / np.float32(max(other_count[x], np.uint16(1)))
 
 
-@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+@njit(nogil=True, cache=True, forceinline=True, fastmath=LOOSE)
 def over_squares(out, surface):  # type: ignore[no-untyped-def]
     """Divide ``out`` by the square of ``surface``."""
     for x in range(out.shape[0]):
@@ -70,7 +74,7 @@ def outside(value, limit):  # type: ignore[no-untyped-def]
     return found
 
 
-@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+@njit(nogil=True, cache=True, forceinline=True, fastmath=LOOSE)
 def total(value, start, stop):  # type: ignore[no-untyped-def]
     """Sum of a run."""
     found = np.float32(0.0)
@@ -79,7 +83,7 @@ def total(value, start, stop):  # type: ignore[no-untyped-def]
     return found
 
 
-@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+@njit(nogil=True, cache=True, forceinline=True, fastmath=LOOSE)
 def powers(value):  # type: ignore[no-untyped-def]
     """Sums of squares and of fourth powers."""
     second = np.float32(0.0)
@@ -91,7 +95,7 @@ def powers(value):  # type: ignore[no-untyped-def]
     return second, fourth
 
 
-@njit(nogil=True, cache=True, fastmath={"reassoc", "contract", "nnan", "nsz"})
+@njit(nogil=True, cache=True, forceinline=True, fastmath=LOOSE)
 def add_to(sums, value):  # type: ignore[no-untyped-def]
     """Add ``value`` to ``sums``."""
     for x in range(value.shape[0]):

@@ -5,6 +5,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from sensorgrade.errors import NotMeasured
+
 ITERATIONS = 8
 REJECT = 6.0  # tiles whose variance is farther off, in standard errors, are left out
 CELLS = 4096  # cells of signal in which tiles are joined before they are fitted
@@ -52,6 +54,11 @@ def variance_fit(
     order : int
     group : ndarray of shape (n,), optional
         Which pair of frames each point is from, counted from 0.
+
+    Raises
+    ------
+    NotMeasured
+        The points that agree with a curve lie at too few signals for it.
 
     Notes
     -----
@@ -116,6 +123,11 @@ def _fitted(
     order: int,
 ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     """Coefficients and their covariance."""
+    if len(signal) <= order:
+        raise NotMeasured(
+            f"only {len(signal)} different signals are left of the flat pairs that agree with one"
+            f" curve, which needs {order + 1}; take pairs at more levels"
+        )
     scale = max(float(np.max(np.abs(signal))), 1.0)
     x = signal / scale
     basis = np.stack([x**power for power in range(order + 1)])
