@@ -11,6 +11,7 @@ from click.testing import CliRunner
 from lot.test_regrade import RECIPE, VOCABULARY, fill
 from sensorgrade.cli import compare, grade, plan
 from sensorgrade.errors import RequestError
+from sensorgrade.recipe import library
 
 
 @pytest.fixture(autouse=True)
@@ -38,12 +39,29 @@ def ran(command, *arguments):
 def test_grade_prints_yields_changes_and_costs(lot):
     found = ran(grade.command, lot, "--limits", lot / "limits.yaml", "--accept", 3)
     assert found.exit_code == 1
-    assert "science or better: 2 (66.7 %, 95 % interval 20.8 % to 93.9 %)" in found.output
+    assert (
+        "science or better: 2 (66.7 %, 95 % interval 20.8 % to 93.9 % by Wilson, 9.4 % to 99.2 % by Clopper"
+        in found.output
+    )
     assert "S00003: reject -> science" in found.output
     assert (
         "read noise at most 5 electron: missed by 1 device, 1 of them by this alone" in found.output
     )
     assert "read noise at most 5.5 electron in place of 5" in found.output
+
+
+def test_grade_shows_how_the_lot_stands_to_its_limits(tmp_path):
+    noises = np.tile(np.linspace(4.0, 4.6, 20)[:, None], 2)
+    noises[7, 1] = 9.0
+    fill(tmp_path, noises, np.arange(20))
+    (tmp_path / "limits.yaml").write_text("grades: {science: {read_noise: <= 5 electron}}\n")
+    found = ran(
+        grade.command, tmp_path, "--limits", tmp_path / "limits.yaml", "--statistics"
+    ).output
+    assert "The lot against the limits of science" in found
+    assert "from 4 to 9 electron in 40 values" in found
+    assert "outliers: S00008 output right 9" in found
+    assert "Cpk " in found
 
 
 def test_grade_shows_yields_against_one_limit_and_two(lot):
@@ -75,6 +93,13 @@ def test_grade_as_json_and_in_silence(lot):
     assert document["examined"]["costs"][0]["limit"]["name"] == "read_noise"
     quiet = ran(grade.command, lot, "--limits", lot / "limits.yaml", "--quiet")
     assert (quiet.output, quiet.exit_code) == ("", 1)
+
+
+def test_grade_takes_a_ready_recipe_by_name_and_says_what_there_is(lot, monkeypatch):
+    monkeypatch.setattr(library, "recipe_folder", lambda: lot)
+    assert "3 devices" in ran(grade.command, lot, "--limits", "recipe").output
+    with pytest.raises(RequestError, match="no ready recipe of that name; nearest is recipe"):
+        ran(grade.command, lot, "--limits", "recpie")
 
 
 def test_grade_ends_well_when_all_are_accepted(lot):

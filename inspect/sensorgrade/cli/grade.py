@@ -12,6 +12,9 @@ if TYPE_CHECKING:
     from sensorgrade.lot.regrade import Regraded, WhatIf
 
 
+LISTED = 10  # outliers of a limit that are printed; --json has them all
+
+
 @click.command(
     epilog="\b\nExamples:\n"
     "  sensorgrade grade reports/lot7 --limits tighter.yaml\n"
@@ -22,9 +25,10 @@ if TYPE_CHECKING:
 @click.argument("run", type=click.Path(path_type=Path))
 @click.option(
     "--limits",
+    "limits_name",
     required=True,
-    type=click.Path(path_type=Path),
-    help="Recipe, or a file of grades, decision, lot and thresholds (stages: pixels) alone.",
+    help="Recipe (a file, or a ready one), or a file of grades, decision, lot and thresholds"
+    " (stages: pixels) alone.",
 )
 @click.option("--grade", "grade_name", help="Grade to examine; the lowest if not given.")
 @click.option(
@@ -36,16 +40,22 @@ if TYPE_CHECKING:
     metavar="NAME",
     help="Show the yield against this limit's bound; give two for one against the other.",
 )
+@click.option(
+    "--statistics",
+    is_flag=True,
+    help="Show how the lot stands to each limit: spread, capability, outliers.",
+)
 @click.option("--json", "as_json", is_flag=True, help="Print JSON instead of text.")
 @click.option("--quiet", is_flag=True, help="Print nothing; the exit status tells.")
 @click.pass_context
 def command(
     ctx: click.Context,
     run: Path,
-    limits: Path,
+    limits_name: str,
     grade_name: str | None,
     accept: int | None,
     vary: tuple[str, ...],
+    statistics: bool,
     as_json: bool,
     quiet: bool,
 ) -> None:
@@ -56,11 +66,12 @@ def command(
     """
     from sensorgrade.errors import RequestError
     from sensorgrade.lot.regrade import regrade, what_if, yield_against
+    from sensorgrade.recipe.library import find_recipe
     from sensorgrade.stages import vocabulary
 
     if len(vary) > 2:
         raise RequestError("--vary: yields are shown against one limit or two, not more")
-    regraded = regrade(run, limits=limits, vocabulary=vocabulary())
+    regraded = regrade(run, limits=find_recipe(limits_name), vocabulary=vocabulary())
     recipe = regraded.recipe
     examined = shown = None
     if recipe.grades:
@@ -78,6 +89,8 @@ def command(
         _print_grades(regraded)
         if examined is not None:
             _print_costs(examined, accept)
+            if statistics:
+                _print_statistics(examined)
             _print_yields(shown)
     done = all(one.decision in ("accept", "ungraded") for one in regraded.graded)
     ctx.exit(0 if done else 1)
@@ -94,11 +107,12 @@ def _print_grades(regraded: "Regraded") -> None:
     rejected = sum(one.decision == "reject" for one in regraded.graded)
     click.echo(f"{devices} devices, {rejected} rejected, {undecided} undecided")
     for of_grade in regraded.yields:
-        interval = of_grade.wilson
+        wilson, exact = of_grade.wilson, of_grade.clopper_pearson
         click.echo(
             f"  {of_grade.grade} or better: {of_grade.reached}"
             f" ({_percent(of_grade.reached / devices if devices else 0)},"
-            f" 95 % interval {_percent(interval.low)} to {_percent(interval.high)})"
+            f" 95 % interval {_percent(wilson.low)} to {_percent(wilson.high)} by Wilson,"
+            f" {_percent(exact.low)} to {_percent(exact.high)} by Clopper and Pearson)"
         )
     if regraded.lot is not None:
         click.echo(f"Lot: {regraded.lot.outcome}. {regraded.lot.sentence}")
@@ -143,6 +157,31 @@ def _print_costs(examined: "WhatIf", accept: int | None) -> None:
         f"  which accepts {examined.concessions.accepted}, gaining"
         f" {', '.join(examined.concessions.gained)}"
     )
+
+
+def _print_statistics(examined: "WhatIf") -> None:
+    from sensorgrade.grading.sentence import stated
+    from sensorgrade.wording import number_text, unit_text
+
+    click.echo(f"The lot against the limits of {examined.grade}")
+    for one in examined.statistics:
+        unit = f" {unit_text(one.limit.unit)}".rstrip()
+        click.echo(
+            f"  {stated(one.limit)}: median {number_text(one.median)}, robust spread"
+            f" {number_text(one.robust_spread, 3)}, from {number_text(one.least)} to"
+            f" {number_text(one.largest)}{unit} in {one.values} values"
+        )
+        if one.capability is not None:
+            index, doubt = one.capability.index, one.capability.standard_uncertainty
+            click.echo(f"    Cpk {index:.2f} ± {doubt:.2f}")
+        if one.outliers:
+            places = ", ".join(
+                f"{each.serial}{'' if each.scope == 'device' else ' ' + each.scope}"
+                f" {number_text(each.value)}"
+                for each in one.outliers[:LISTED]
+            )
+            more = len(one.outliers) - LISTED
+            click.echo(f"    outliers: {places}{f', and {more} more' if more > 0 else ''}")
 
 
 def _print_yields(shown: "YieldCurve | YieldGrid | None") -> None:
