@@ -3,6 +3,7 @@
 import math
 from functools import cache
 
+NO_DOUBT = 1e-9  # of a value: a standard uncertainty below that is not told
 SUPERSCRIPTS = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 
 
@@ -65,9 +66,13 @@ def doubt_text(value: float, standard_uncertainty: float | None, unit: str) -> s
     '4.932 ± 0.012 electron'
     >>> doubt_text(3.14159e-6, 2.2e-8, "")
     '(3.142 ± 0.022) × 10⁻⁶'
+    >>> doubt_text(270.0, 1e-90, "")
+    '270'
     """
     tail = f" {unit_text(unit)}" if unit else ""
-    if not standard_uncertainty or not math.isfinite(standard_uncertainty):
+    # A count whose pixels are all but certain has a doubt that nobody can picture.
+    told = standard_uncertainty > NO_DOUBT * abs(value) if standard_uncertainty else False
+    if not standard_uncertainty or not told or not math.isfinite(standard_uncertainty):
         return f"{number_text(value, 6)}{tail}"
     largest = max(abs(value), standard_uncertainty)
     exponent = math.floor(math.log10(largest))

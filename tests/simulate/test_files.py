@@ -4,22 +4,25 @@ import json
 from dataclasses import replace
 from pathlib import Path
 
+import numpy as np
 import pytest
 import yaml
 from astropy.io import fits
 from click.testing import CliRunner
 from numpy.testing import assert_array_equal
 
+from sensorgrade import api
 from sensorgrade.cli.main import command, main
 from sensorgrade.errors import RequestError
 from sensorgrade.frames.inventory import find_devices
-from sensorgrade.recipe.library import recipe_folder
+from sensorgrade.recipe.library import recipe_folder, recipe_names
 from sensorgrade.recipe.load import load_options, load_recipe
+from sensorgrade.recipe.model import Sensor
 from sensorgrade.recipe.vocabulary import Vocabulary
 from sensorgrade.simulate.device import simulate_device
 from sensorgrade.simulate.files import write_device
 from sensorgrade.simulate.lot import Simulation, find_model, model_names, write_lot
-from sensorgrade.simulate.model import DefectModel
+from sensorgrade.simulate.model import DefectModel, SensorModel
 from sensorgrade.simulate.plan import FramePlan, StackPlan, frame_plan
 from simulate.sensors import two_outputs
 
@@ -162,7 +165,7 @@ def test_the_same_seed_writes_the_same_bytes(tmp_path):
 @pytest.mark.parametrize("name", model_names())
 def test_a_ready_model_is_right_and_fits_its_recipe(name):
     simulation = load_options(find_model(name), Simulation)
-    recipe = yaml.safe_load((recipe_folder() / f"{name}.yaml").read_text())
+    recipe = yaml.safe_load((recipe_folder() / f"{name.removesuffix('-after')}.yaml").read_text())
     model = yaml.safe_load(find_model(name).read_text())
     assert model["device"]["sensor"] == recipe["sensor"]
     small = replace(simulation.plan, stacks=(StackPlan(kind="bias", frames=1),))
@@ -171,6 +174,42 @@ def test_a_ready_model_is_right_and_fits_its_recipe(name):
         simulation.device.rows,
         simulation.device.columns,
     )
+
+
+@pytest.mark.parametrize("name", model_names())
+def test_frames_of_a_ready_model_are_read_as_its_recipe_says(name, tmp_path):
+    recipe = api.load_recipe(name.removesuffix("-after"))
+    simulation = load_options(find_model(name), Simulation)
+    kinds = {stack.kind for stack in simulation.plan.stacks}
+    one_of_each = tuple(StackPlan(kind=kind, frames=1, exposure=2.0) for kind in sorted(kinds))
+    small = replace(simulation, plan=replace(simulation.plan, stacks=one_of_each))
+    write_lot(small, tmp_path, devices=2)
+    found = find_devices([tmp_path], recipe)
+    assert [device.serial for device in found] == ["SIM-0001", "SIM-0002"]
+    for device in found:
+        assert {stack.kind for stack in device.stacks} == kinds
+        assert device.findings == ()
+        assert (device.lot is None) == (simulation.wafer is None)
+
+
+def test_every_ready_recipe_can_be_shown_but_the_one_for_real_frames():
+    ready = {name.removesuffix("-after") for name in model_names()}
+    assert set(recipe_names()) - ready == {"demo", "twilight-flats"}
+
+
+def test_some_devices_only_have_a_defect_by_chance():
+    pattern = DefectModel(kind="dead", count=3, chance=30.0)
+    model = SensorModel(
+        sensor=Sensor(technology="cmos", pixel_pitch=5.0), rows=24, columns=24, defects=(pattern,)
+    )
+    bias = frame_plan(bias=1, darks=())
+    counts = [
+        len(simulate_device(model, bias, serial=f"S{number}").truth.defects)
+        for number in range(200)
+    ]
+    assert set(counts) == {0, 3}
+    # Binomial: 60 of 200, standard deviation 6.5.
+    assert 40 <= np.count_nonzero(counts) <= 80
 
 
 def test_a_wrong_model_is_refused_with_all_its_mistakes(tmp_path, capsys):

@@ -111,6 +111,9 @@ class DefectModel:
 
     kind: str = choice("What is wrong", *DEFECT_KINDS)
     count: int = number("How many at random places", default=1, minimum=1)
+    chance: float = quantity(
+        "%", "Share of devices that have it", default=100.0, minimum=0.0, maximum=100.0
+    )
     row: int | None = number(
         "First row, 0-based, of the assembled image; omit for random places",
         default=None,

@@ -68,6 +68,8 @@ def placed_defects(
         model = models[at]
         value, unit = _strength(at, model)
         found[at] = []
+        if model.chance < 100 and 100 * rng.random() >= model.chance:
+            continue
         for _ in range(model.count):
             section, output = _place(at, model, geometry, taken, rng)
             taken[_grown(section)] = True
