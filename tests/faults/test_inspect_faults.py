@@ -44,10 +44,10 @@ def inspected(bench: Path, out: Path, *more: str) -> Answer:
     return answer
 
 
-def started(bench: Path, out: Path) -> subprocess.Popen[str]:
+def started(bench: Path, out: Path, *more: str) -> subprocess.Popen[str]:
     """One run as a program of its own."""
     return subprocess.Popen(
-        [*COMMAND, *arguments(bench, out, "--jobs", "2")],
+        [*COMMAND, *arguments(bench, out, "--jobs", "2", *more)],
         stdout=subprocess.PIPE,
         stderr=subprocess.PIPE,
         text=True,
@@ -322,6 +322,31 @@ def test_a_clock_that_jumps_changes_no_result_and_repeats_no_device(bench, tmp_p
     assert {path: path.stat().st_mtime_ns for path in out.rglob("result.json")} == before
     with read_ledger(out) as ledger:
         assert [one.ending for one in ledger.runs()] == ["finished", "finished"]
+
+
+@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
+def test_a_watch_takes_devices_as_they_become_complete_and_ends_on_request(tmp_path, number):
+    write_sensor(tmp_path / "in" / "S0", "S0")
+    write_recipe(tmp_path / "recipe.yaml")
+    out = tmp_path / "out"
+    watch = started(tmp_path, out, "--watch", "--marker", "done.txt", "--json")
+    assert watch.stdout is not None
+    (tmp_path / "in" / "S0" / "done.txt").touch()
+    write_sensor(tmp_path / "in" / "S1", "S1")  # not complete
+    while watch.stdout.readline() not in ("}\n", ""):
+        pass
+    assert not (out / "S1").exists()
+    watch.send_signal(number)
+    _, error = watch.communicate(timeout=60)
+    assert watch.returncode == 0, error
+    last = error.splitlines()[-1]
+    assert last == (
+        "sensorgrade: watch stopped on request; what is done is kept, give the same command again"
+        " to go on"
+    )
+    assert not [path for path in out.iterdir() if path.name.startswith((".", "lot.sqlite-"))]
+    with read_ledger(out) as ledger:
+        assert [one.serial for one in ledger.results()] == ["S0"]
 
 
 @pytest.mark.nightly

@@ -67,6 +67,7 @@ def command(
     from sensorgrade.frames.inventory import find_devices
     from sensorgrade.inspection import inspect_lot
     from sensorgrade.lot.engine import LotOptions, run_folder
+    from sensorgrade.lot.stop import stoppable
     from sensorgrade.lot.summary import device_lines
     from sensorgrade.lot.watch import completed
     from sensorgrade.recipe.library import find_recipe
@@ -98,18 +99,27 @@ def command(
     else:
         batches = iter([find_devices(sources, recipe)])
     out = folder or Path("reports") / sources[0].resolve().name
-    with run_folder(out) as ledger:
-        for devices in batches:
-            with shown_progress(quiet=quiet) as report:
-                outcome = inspect_lot(
-                    devices,
-                    recipe,
-                    ledger=ledger,
-                    options=options,
-                    report=report,
-                    figures=figures,
-                )
-            tell_outcome(outcome, device_lines(ledger), out, quiet=quiet, as_json=as_json)
-            if outcome.stopped:
-                break
-    ctx.exit(outcome.exit_status)
+    with stoppable(), run_folder(out) as ledger:
+        try:
+            for devices in batches:
+                with shown_progress(quiet=quiet) as report:
+                    outcome = inspect_lot(
+                        devices,
+                        recipe,
+                        ledger=ledger,
+                        options=options,
+                        report=report,
+                        figures=figures,
+                    )
+                tell_outcome(outcome, device_lines(ledger), out, quiet=quiet, as_json=as_json)
+                status = outcome.exit_status
+                if outcome.stopped:
+                    break
+        except KeyboardInterrupt:  # while no device was at work
+            click.echo(
+                f"sensorgrade: {'watch ' if watch else ''}stopped on request; what is done is"
+                " kept, give the same command again to go on",
+                err=True,
+            )
+            status = ledger.tally().exit_status if watch else 3
+    ctx.exit(status)
