@@ -100,6 +100,11 @@ def test_grade_takes_a_ready_recipe_by_name_and_says_what_there_is(lot, monkeypa
         ran(grade.command, lot, "--limits", "recpie")
 
 
+def test_more_devices_than_there_are_cannot_be_accepted(lot):
+    found = ran(grade.command, lot, "--limits", lot / "limits.yaml", "--accept", 4)
+    assert "No easing accepts 4 devices: there are 3" in found.output
+
+
 def test_grade_ends_well_when_all_are_accepted(lot):
     (lot / "limits.yaml").write_text("grades: {any: {read_noise: <= 9 electron}}\n")
     assert ran(grade.command, lot, "--limits", lot / "limits.yaml").exit_code == 0

@@ -142,7 +142,9 @@ def _print_costs(examined: "WhatIf", accept: int | None) -> None:
     if accept is None:
         return
     if examined.concessions is None:
-        click.echo(f"No easing accepts {accept} devices: too many lack a measurement")
+        devices = len(examined.tightest.serials)
+        why = "too many lack a measurement" if accept <= devices else f"there are {devices}"
+        click.echo(f"No easing accepts {accept} devices: {why}")
         return
     if not examined.concessions.eased:
         click.echo(f"{examined.concessions.accepted} devices are accepted as the limits stand")

@@ -26,7 +26,13 @@ if TYPE_CHECKING:
 @click.option("--expect", multiple=True, metavar="NAME=VALUE", help="What to expect instead.")
 @click.option("--bias", default=10, show_default=True, type=click.IntRange(min=0))
 @click.option("--darks", default=5, show_default=True, type=click.IntRange(min=0))
-@click.option("--exposure", default=60.0, show_default=True, help="Of the darks [s].", type=float)
+@click.option(
+    "--exposure",
+    default=60.0,
+    show_default=True,
+    type=click.FloatRange(min=0, min_open=True),
+    help="Of the darks [s].",
+)
 @click.option(
     "--pairs",
     default=1,
@@ -113,6 +119,8 @@ def command(
         )
     elif not quiet:
         _print_device(device)
+        if not plans:
+            click.echo("The recipe has no limits, so there is nothing to plan for")
         for plan in plans:
             click.echo(_line(plan, given, power))
     ctx.exit(int(any(plan.given is not None and plan.given > plan.needed for plan in plans)))

@@ -15,6 +15,7 @@ from sensorgrade.grading.expected_uncertainty import (
     hot_pixels_uncertainty,
 )
 from sensorgrade.recipe.model import Limit, Recipe
+from sensorgrade.wording import number_text
 
 STEPS = (2, 3, 4, 6, 8, 12, 16, 24, 32, 48, 64, 96, 128, 192, 256)
 # Which parts of a frame set a limit depends on; the others stay as they are given.
@@ -166,8 +167,8 @@ def _planned(
         enough = smallest_set(limit, device, given=given, needed=needed, longest_dark=longest_dark)
         if enough is None:
             note = (
-                f"no set of up to {STEPS[-1]} of its frames reaches {needed:.2g}; what it rests on"
-                " besides (the gain, the lamp, the level's scatter) sets the floor"
+                f"no set of up to {STEPS[-1]} of its frames reaches {number_text(needed, 2)}; what it"
+                " rests on besides (the gain, the lamp, the level's scatter) sets the floor"
             )
     known = now < inf
     chance = normal_probability(away / now - guard_factor(recipe.decision.confidence))
