@@ -167,8 +167,8 @@ def _planned(
         enough = smallest_set(limit, device, given=given, needed=needed, longest_dark=longest_dark)
         if enough is None:
             note = (
-                f"no set of up to {STEPS[-1]} of its frames reaches {number_text(needed, 2)}; what it"
-                " rests on besides (the gain, the lamp, the level's scatter) sets the floor"
+                f"no set of up to {STEPS[-1]} of its frames reaches {number_text(needed, 2)};"
+                " what it rests on besides (the gain, the lamp, the level's scatter) sets the floor"
             )
     known = now < inf
     chance = normal_probability(away / now - guard_factor(recipe.decision.confidence))
