@@ -147,7 +147,7 @@ def bench_study(
         try:
             studies.append(_study(name, scope, unit, of_place, len(runs), recipe))
         except NotMeasured as reason:
-            refused = str(reason)
+            refused = refused or str(reason)
     if not studies:
         raise RequestError(refused or "the runs have no measurement of a device in common")
     return tuple(studies)
