@@ -336,6 +336,18 @@ def test_the_grade_shown_is_that_of_the_result(device_tab, sample):
     assert device_tab.locator("#reason").inner_text() == stored["reasons"][0]
 
 
+@pytest.mark.parametrize(
+    "text", ["<img src=x onerror=alert(1)>", "</title><script>alert(1)</script>"]
+)
+def test_a_hostile_serial_number_runs_nothing_in_a_browser(opened, files, sample, text):
+    hostile = replace(sample.result, serial=text, lot=text, wafer=text)
+    (files / "hostile.html").write_text(device_page(hostile, **sample.parts))
+    tab = opened("hostile.html", ready="#viewer[data-ready]")
+    assert tab.locator("h1").inner_text() == text
+    assert tab.title().startswith(text)
+    assert tab.locator("img").count() == 3
+
+
 def test_every_picture_has_words(device_tab):
     assert all(device_tab.locator("img").nth(i).get_attribute("alt") for i in range(3))
     assert (

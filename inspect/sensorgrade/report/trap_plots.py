@@ -7,6 +7,7 @@ from sensorgrade.report.plot import Axis, Mark, Plot, Series
 from sensorgrade.silicon import SPECIES
 
 BINS = 30
+HEADROOM = 1.2  # of the histogram below the labels of the species
 
 
 def pocket_pumping_plots(result: PocketPumpingResult) -> tuple[Plot, ...]:
@@ -46,6 +47,7 @@ def pocket_pumping_plots(result: PocketPumpingResult) -> tuple[Plot, ...]:
     energies = [trap.energy.energy for trap in result.traps if trap.energy is not None]
     if energies:
         edges = np.linspace(min(energies) - 0.01, max(energies) + 0.01, BINS + 1)
+        counts = np.histogram(energies, edges)[0]
         plots.append(
             Plot(
                 key="trap-energies",
@@ -56,12 +58,8 @@ def pocket_pumping_plots(result: PocketPumpingResult) -> tuple[Plot, ...]:
                 alt=f"Histogram of the energies of {len(energies)} traps below the conduction"
                 " band.",
                 x=Axis(label="energy below the conduction band [eV]"),
-                y=Axis(label="traps", low=0.0),
-                series=(
-                    Series(
-                        label="traps", x=edges, y=np.histogram(energies, edges)[0], draw="steps"
-                    ),
-                ),
+                y=Axis(label="traps", low=0.0, high=HEADROOM * float(counts.max())),
+                series=(Series(label="traps", x=edges, y=counts, draw="steps"),),
                 marks=tuple(
                     Mark(label=species.name, x=species.energy)
                     for species in SPECIES
