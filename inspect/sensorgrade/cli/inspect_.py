@@ -34,7 +34,8 @@ import click
 @click.option(
     "--figures",
     is_flag=True,
-    help="Write the figures of each page as PNG and SVG too, into OUT/SERIAL/figures.",
+    help="Write the figures of each page as PNG and SVG too, into OUT/SERIAL/figures; those of"
+    " finished devices with --fresh.",
 )
 @click.option("--watch", is_flag=True, help="Go on and take devices as they become complete.")
 @click.option("--marker", help="With --watch: the file that says a device's folder is complete.")
