@@ -8,6 +8,7 @@ import argparse
 import json
 import os
 import platform
+import re
 import resource
 import subprocess
 import sys
@@ -330,6 +331,10 @@ def main() -> None:
             *small_devices(work, recipe_file),
             *growth(work, recipe_file, size),
         ]
+    for script in ("lot_scaling.py", "ledger_scale.py", "pages.py"):
+        program = [sys.executable, str(HERE / script), *(["--quick"] if quick else [])]
+        done = subprocess.run(program, check=True, stdout=subprocess.PIPE, text=True)
+        sections += [*done.stdout.splitlines(), ""]
     versions = ", ".join(f"{n} {__import__(n).__version__}" for n in ("numpy", "numba", "scipy"))
     head = [
         "# Performance",
@@ -342,7 +347,7 @@ def main() -> None:
         f" {resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 2**10:.0f} MiB.",
         "",
     ]
-    text = "\n".join([*head, *sections])
+    text = re.sub("\n{3,}", "\n\n", "\n".join([*head, *sections]))
     if quick:
         print(text)
     else:
