@@ -237,9 +237,11 @@ def inspect_lot(
         report=report,
     )
     results, failures = ledger.results(in_short=True), ledger.failures()
+    lots = {one.lot for one in results}
+    name = (lots.pop() if len(lots) == 1 else None) or ledger.folder.name
     with collector_rests():
         table = lot_csv(lot_columns(results, failures))
-        page = lot_page(results, failures=failures, recipe=recipe, name=ledger.folder.name)
+        page = lot_page(results, failures=failures, recipe=recipe, name=name)
     try:
         write_whole(ledger.folder / "lot.csv", table)
         write_whole(ledger.folder / "lot.html", page)

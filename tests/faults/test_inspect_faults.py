@@ -197,7 +197,7 @@ def test_a_user_who_can_keep_no_compiled_code_is_served_all_the_same(tmp_path, r
             folder.chmod(0o555)
     program = (
         "import numpy, sensorgrade.kernels.overscan as k; print(k.__file__);"
-        "from sensorgrade.kernels import linear_sum"
+        "from sensorgrade.kernels import combine"
     )
     found = subprocess.run(
         [*(LIMITED if os.geteuid() == 0 else []), sys.executable, "-c", program],
