@@ -4,6 +4,7 @@ from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
 
+from sensorgrade import stages as table
 from sensorgrade.errors import RequestError
 from sensorgrade.frames.folder_name import folder_names
 from sensorgrade.frames.frame import DeviceFrames, Frame
@@ -11,7 +12,6 @@ from sensorgrade.frames.stacks import stacks
 from sensorgrade.recipe.library import find_recipe
 from sensorgrade.recipe.load import load_recipe as load_with_vocabulary
 from sensorgrade.recipe.model import Recipe
-from sensorgrade.stages import vocabulary
 
 
 def load_recipe(name_or_path: str | Path) -> Recipe:
@@ -36,7 +36,7 @@ def load_recipe(name_or_path: str | Path) -> Recipe:
     >>> recipe.name, [grade.name for grade in recipe.grades]
     ('two-output CCD with overscan', ['science', 'engineering'])
     """
-    return load_with_vocabulary(find_recipe(str(name_or_path)), vocabulary())
+    return load_with_vocabulary(find_recipe(str(name_or_path)), table.vocabulary())
 
 
 def device_from_frames(

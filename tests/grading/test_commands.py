@@ -1,8 +1,6 @@
 """The commands over a small stored lot: what they print and how they end."""
 
 import json
-import sys
-from types import ModuleType
 
 import numpy as np
 import pytest
@@ -17,9 +15,7 @@ from sensorgrade.recipe import library
 @pytest.fixture(autouse=True)
 def words(monkeypatch):
     """The small vocabulary in place of the stage table's."""
-    stages = ModuleType("sensorgrade.stages")
-    stages.vocabulary = lambda: VOCABULARY
-    monkeypatch.setitem(sys.modules, "sensorgrade.stages", stages)
+    monkeypatch.setattr("sensorgrade.stages.vocabulary", lambda: VOCABULARY)
 
 
 @pytest.fixture

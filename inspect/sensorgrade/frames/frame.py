@@ -1,6 +1,6 @@
 """A raw frame as it lies on disk or in memory, and frames taken alike: the stack."""
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Literal
 
@@ -133,3 +133,18 @@ class DeviceFrames:
     def frames(self) -> tuple[Frame, ...]:
         """Every frame, stack after stack."""
         return tuple(frame for stack in self.stacks for frame in stack.frames)
+
+
+def at_absolute_paths(device: DeviceFrames) -> DeviceFrames:
+    """The device with paths that mean the same wherever a process was started."""
+    stacks = []
+    for stack in device.stacks:
+        frames = []
+        for frame in stack.frames:
+            planes = {
+                name: replace(plane, path=plane.path and plane.path.absolute())
+                for name, plane in frame.planes.items()
+            }
+            frames.append(replace(frame, path=frame.path.absolute(), planes=planes))
+        stacks.append(replace(stack, frames=tuple(frames)))
+    return replace(device, stacks=tuple(stacks))

@@ -6,7 +6,7 @@ that dies again and again, or lacks this package), so the cluster is asked direc
 
 from collections.abc import Generator, Iterator, Mapping
 from contextlib import contextmanager
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from functools import partial
 from itertools import islice
 from pathlib import Path
@@ -14,7 +14,7 @@ from typing import Any
 
 from sensorgrade import __version__
 from sensorgrade.errors import RequestError
-from sensorgrade.frames.frame import DeviceFrames
+from sensorgrade.frames.frame import DeviceFrames, at_absolute_paths
 from sensorgrade.lot.attempt import Attempt, InspectOne, attempt, last_stage, note_of
 
 CONNECT = 10.0  # s to wait for the scheduler to answer
@@ -48,13 +48,15 @@ class Cluster:
         run = partial(
             attempt, inspect_one, workplace=workplace, threads=1, time_limit=self.time_limit
         )
-        left = iter(devices.items())
+        left = iter(devices)
         numbers: dict[Any, int] = {}
+        given_up: list[int] = []
 
         def submitted(count: int) -> list[Any]:
             futures = []
-            for number, device in islice(left, count):
-                future = self.client.submit(run, _absolute(device), number, pure=False)
+            for number in islice(left, count):
+                device = at_absolute_paths(devices[number])
+                future = self.client.submit(run, device, number, pure=False)
                 numbers[future] = number
                 futures.append(future)
             return futures
@@ -63,15 +65,25 @@ class Cluster:
             waiting = as_completed(submitted(2 * self.slots), loop=self.client.loop)
             for future in waiting:
                 number = numbers.pop(future)
-                error = future.exception()
-                if error is None:
+                if future.exception() is None:
                     yield future.result()
                 else:
-                    where = last_stage(note_of(workplace, number))
-                    reason = f"no worker of the cluster could inspect it{where}: {error}"
-                    yield Attempt(number, 0.0, failure=f"{reason}; look at the workers' logs")
+                    given_up.append(number)
                 for other in submitted(1):
                     waiting.add(other)
+            # A device may have been given up only because it lay with one that kills workers:
+            # alone, each is to blame for itself.
+            left = iter(given_up)
+            for number in given_up:
+                (future,) = submitted(1)
+                error = future.exception()
+                del numbers[future]
+                if error is None:
+                    yield future.result()
+                    continue
+                where = last_stage(note_of(workplace, number))
+                reason = f"no worker of the cluster could inspect it{where}: {error}"
+                yield Attempt(number, 0.0, failure=f"{reason}; look at the workers' logs")
         finally:
             self.client.cancel(list(numbers))
 
@@ -95,21 +107,6 @@ class Cluster:
                     f"{self.address}: worker {worker} does not see {workplace.parent}; give --out"
                     " on a file system that all workers share"
                 )
-
-
-def _absolute(device: DeviceFrames) -> DeviceFrames:
-    """The device with paths that mean the same wherever a worker was started."""
-    stacks = []
-    for stack in device.stacks:
-        frames = []
-        for frame in stack.frames:
-            planes = {
-                name: replace(plane, path=plane.path and plane.path.absolute())
-                for name, plane in frame.planes.items()
-            }
-            frames.append(replace(frame, path=frame.path.absolute(), planes=planes))
-        stacks.append(replace(stack, frames=tuple(frames)))
-    return replace(device, stacks=tuple(stacks))
 
 
 def _seen(place: str) -> tuple[str, bool]:
@@ -139,11 +136,12 @@ def connected(address: str, *, time_limit: float | None) -> Iterator[Cluster]:
             f"{address}: no Dask scheduler answers ({error}); start one, or correct --cluster"
         ) from error
     try:
-        slots = sum(client.nthreads().values())
-        if not slots:
+        try:  # one that was just ended comes back
+            client.wait_for_workers(1, timeout=CONNECT)
+        except TimeoutError:
             raise RequestError(
                 f"{address}: the scheduler has no workers; start them with: dask worker {address}"
-            )
-        yield Cluster(address, client, slots, time_limit)
+            ) from None
+        yield Cluster(address, client, sum(client.nthreads().values()), time_limit)
     finally:
         client.close()

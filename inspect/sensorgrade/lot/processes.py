@@ -14,7 +14,7 @@ from pathlib import Path
 
 import joblib
 
-from sensorgrade.frames.frame import DeviceFrames
+from sensorgrade.frames.frame import DeviceFrames, at_absolute_paths
 from sensorgrade.lot.attempt import (
     Attempt,
     InspectOne,
@@ -106,7 +106,11 @@ class Processes:
                 pre_dispatch=count if self.jobs > 1 else 1,
                 max_nbytes=None,
             )
-            work = [joblib.delayed(run)(device, number) for number, device in devices.items()]
+            # Workers outlive a run, and may have been started elsewhere.
+            work = [
+                joblib.delayed(run)(at_absolute_paths(device), number)
+                for number, device in devices.items()
+            ]
             with uninterrupted():
                 answers = parallel(work)
         try:
