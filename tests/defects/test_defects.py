@@ -5,6 +5,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+from scipy.stats import poisson
 
 from sensorgrade.defects.bits import BY_NAME
 from sensorgrade.defects.clusters import ClusterOptions, groups
@@ -103,6 +104,31 @@ def test_a_sound_sensor_has_no_defect():
         defects, _ = inspected(model(), seed=seed)
         assert Counter(defects.table["kind"].tolist()) == {}
         assert not defects.mask.any()
+
+
+@pytest.mark.parametrize("unequal", [0.0, 30.0])
+@pytest.mark.parametrize(
+    "seeds, size", [(2, 512), pytest.param(50, 1024, marks=pytest.mark.nightly)]
+)
+def test_false_alarms_are_rarer_than_one_in_ten_million(seeds, size, unequal):
+    """With the same dark current in all pixels, and with one that differs by 30 %."""
+    sound = model(rows=size, columns=size)
+    sound = replace(sound, dark=replace(sound.dark, nonuniformity=unequal))
+    found = 0
+    for seed in range(seeds):
+        inputs, _ = measured(sound, seed=seed)
+        found += len(find_defects(inputs, ALL, {}).table)
+    # Poisson: 99.9 % of sensors that keep to the rate lie below this number.
+    assert found <= poisson.ppf(0.999, 1e-7 * seeds * size**2)
+
+
+def test_pixels_without_a_valid_sample_are_told():
+    inputs, _ = measured(model())
+    count = inputs.masters.flat.count.copy()
+    count[5, 7] = 0
+    masters = replace(inputs.masters, flat=replace(inputs.masters.flat, count=count))
+    mask = find_defects(replace(inputs, masters=masters), ALL, {}).mask
+    assert np.argwhere(mask & BY_NAME["no data"].value).tolist() == [[5, 7]]
 
 
 @pytest.mark.parametrize("response", [60.0, 95.0, 105.0])

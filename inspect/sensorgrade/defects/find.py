@@ -75,6 +75,10 @@ def find_defects(
         cluster_rows, points = _clustered(points, options["clusters"], mask)
         rows.extend(cluster_rows)
     rows.extend(_point_row(point) for point in points[points["probability"] >= CERTAIN])
+    masters = inputs.masters
+    for master in (masters.bias, masters.dark, masters.flat):
+        if master is not None:
+            mask[master.count == 0] |= BY_NAME["no data"].value
     table = np.array(rows, DEFECT) if rows else np.empty(0, DEFECT)
     table["output"] = _outputs(geometry, table["row"], table["column"])
     table["zone"] = zone_names(zones, table["row"], table["column"], geometry.shape)
